@@ -1,0 +1,1 @@
+"""Foundations: errors, arrays, quadrature and search. Imports nothing of ours."""
