@@ -12,14 +12,15 @@ class Distribution(abc.ABC):
     """Belief about one number, in the number's own unit.
 
     Subclasses are frozen keyword-only dataclasses whose fields are the keys of the study file and whose
-    `kind` is the value of its `distribution` key. Array methods broadcast and keep the shape of their argument.
+    `kind` is the value of its `distribution` key. Array methods broadcast and keep the shape of their
+    argument.
     """
 
     kind: ClassVar[str]
 
     @abc.abstractmethod
     def pdf(self, x: FloatArray) -> FloatArray:
-        """Density of the continuous part (it integrates to 1 minus the mass of the atoms); 0 off the support."""
+        """Density of the continuous part (it integrates to 1 minus the mass of atoms); 0 off the support."""
 
     @abc.abstractmethod
     def cdf(self, x: FloatArray) -> FloatArray:
@@ -42,8 +43,10 @@ class Distribution(abc.ABC):
     def breaks(self) -> FloatArray:
         """Sorted finite points between which the density is smooth enough for one Gauss panel.
 
-        First and last leave less than about 1e-16 of the mass outside; every kink, jump and edge of the density is among
-        them; near an infinite density or in a power tail they are spaced geometrically. Empty if all mass is in atoms.
+        First and last leave less than about 1e-16 of the mass outside; every kink, jump and edge of the
+        density is among them; near an infinite density or in a power tail they are spaced geometrically.
+        Where the density is infinite at an end other than 0 more is left outside, all of it within 1e-8 of
+        the last break, because floats there are too coarse. Empty if all mass is in atoms.
         """
 
     def atoms(self) -> tuple[FloatArray, FloatArray]:
@@ -51,11 +54,11 @@ class Distribution(abc.ABC):
         return np.empty(0), np.empty(0)
 
     @abc.abstractmethod
-    def mean(self) -> float:
-        """Expectation; NaN when it does not exist."""
+    def expectation(self) -> float:
+        """Expectation (not called `mean`, which is a field of some); NaN when it does not exist."""
 
     @abc.abstractmethod
-    def sd(self) -> float:
+    def deviation(self) -> float:
         """Standard deviation; infinite or NaN when it does not exist."""
 
     @abc.abstractmethod
@@ -66,8 +69,8 @@ class Distribution(abc.ABC):
     def random_variable(self, pm: Any, name: str, shape: tuple[int, ...]) -> Any:
         """Independent draws as a named variable of the PyMC model in context, for forward simulation.
 
-        `pm` is the pymc module, handed in so that this package never imports it. Built from PyMC's own distributions, not
-        from `ppf`, so that the sampling route can contradict the integration route.
+        `pm` is the pymc module, handed in so that this package never imports it. Built from PyMC's own
+        distributions, not from `ppf`, so that the sampling route can contradict the integration route.
         """
 
     @abc.abstractmethod

@@ -1,0 +1,78 @@
+"""Family `estimate`: anything whose estimate is normal around the truth with a known standard error."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any, ClassVar, Literal, final
+
+import numpy as np
+
+from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.errors import Fault, Invalid, check_values
+from bayesdesign.design.base import Accuracy, Design
+from bayesdesign.design.normal_line import NormalAnalysis, NormalLine
+from bayesdesign.prior.base import Distribution
+from bayesdesign.prior.point import Point
+
+
+@final
+@dataclass(frozen=True, kw_only=True)
+class Estimate(Design):
+    """An estimate with standard error unit_sd / sqrt(n), or with a given standard error.
+
+    The mediator for every analysis that ends in an estimate and its standard error (normal approximation, common practice).
+    """
+
+    family: ClassVar[str] = "estimate"
+
+    n: int | None = None
+    unit_sd: Distribution | None = None
+    standard_error: Distribution | None = None
+    analysis: Literal["z"] = "z"
+
+    def __post_init__(self) -> None:
+        by_n, by_error = self.n is not None or self.unit_sd is not None, self.standard_error is not None
+        if by_n == by_error or (by_n and (self.n is None or self.unit_sd is None)):
+            raise Invalid([Fault(where="n", problem="sizes do not fit", allowed="give n and unit_sd, or standard_error alone")])
+        check_values((self.n is None or self.n >= 1, "n", self.n, "a whole number of at least 1"))
+
+    @property
+    def planned_n(self) -> int | None:
+        return self.n
+
+    @property
+    def n_label(self) -> str:
+        return "n"
+
+    @property
+    def effect_words(self) -> str:
+        return "the effect"
+
+    @property
+    def nuisance(self) -> dict[str, Distribution]:
+        if self.unit_sd is not None:
+            return {"unit_sd": self.unit_sd}
+        return {"standard_error": self.standard_error or Point(value=1.0)}
+
+    def _standard_error(self, n: Any, nuisance: Mapping[str, Any]) -> Any:
+        return nuisance["unit_sd"] / np.sqrt(n) if self.unit_sd is not None else nuisance["standard_error"] + 0 * n
+
+    def outcomes(
+        self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy
+    ) -> NormalLine:
+        del accuracy  # a z test needs no auxiliary nodes
+        return known_error(self._standard_error(n[:, None], nuisance), null)
+
+    def forward(
+        self, pm: Any, effect: Any, nuisance: Mapping[str, Any], n: int, shape: tuple[int, ...]
+    ) -> dict[str, Any]:
+        return {"estimate": pm.Normal("estimate", effect, self._standard_error(n, nuisance), shape=shape)}
+
+    def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> NormalAnalysis:
+        return NormalAnalysis(data["estimate"], self._standard_error(n, nuisance), np.inf)
+
+
+def known_error(se: FloatArray, null: float) -> NormalLine:
+    """The z test: one auxiliary node, the standard error is what it is said to be. `se` is (N, M)."""
+    return NormalLine(
+        se=se, estimated_se=se[..., None], df=np.full((1, 1, 1), np.inf), weight=np.ones((len(se), 1)), null=null
+    )

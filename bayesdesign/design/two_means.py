@@ -1,0 +1,147 @@
+"""Family `two_means`: the difference of the means of two groups of normal values."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any, ClassVar, Literal, final
+
+import numpy as np
+
+from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.chi import sd_ratio_nodes
+from bayesdesign.core.errors import Fault, Invalid
+from bayesdesign.design.base import Accuracy, Design
+from bayesdesign.design.estimate import known_error
+from bayesdesign.design.groups import check_sizes, group_sizes
+from bayesdesign.design.means import drawn_variance, student_line
+from bayesdesign.design.normal_line import NormalAnalysis, NormalLine, critical_value
+from bayesdesign.prior.base import Distribution
+from bayesdesign.prior.point import Point
+
+
+@final
+@dataclass(frozen=True, kw_only=True)
+class TwoMeans(Design):
+    """Treatment minus control; two-sample t (pooled variance), z (sds known) or Welch (1947) test.
+
+    Groups may differ in size. `sd` is common to both; with `welch` and `z` each group may have its own.
+    """
+
+    family: ClassVar[str] = "two_means"
+    minimum_n: ClassVar[int] = 2
+
+    n_per_group: int | None = None
+    n_treatment: int | None = None
+    n_control: int | None = None
+    sd: Distribution | None = None
+    sd_treatment: Distribution | None = None
+    sd_control: Distribution | None = None
+    analysis: Literal["t", "z", "welch"] = "t"
+
+    def __post_init__(self) -> None:
+        check_sizes(self.n_per_group, self.n_treatment, self.n_control, 2)
+        own = (self.sd_treatment is not None, self.sd_control is not None)
+        if (self.sd is not None) == any(own) or (any(own) and not all(own)):
+            raise Invalid([Fault(where="sd", problem="sds do not fit", allowed="give sd, or sd_treatment and sd_control")])
+        if any(own) and self.analysis == "t":
+            raise Invalid(
+                [Fault(where="analysis", problem="the pooled t test assumes one sd", got="'t'", allowed="use 'welch' or 'z', or give sd")]
+            )
+
+    @property
+    def planned_n(self) -> int | None:
+        return self.n_per_group if self.n_per_group is not None else self.n_treatment
+
+    @property
+    def n_label(self) -> str:
+        return "n_per_group" if self.n_per_group is not None else "n_treatment"
+
+    @property
+    def effect_words(self) -> str:
+        return "the difference of means, treatment minus control"
+
+    def group_sizes(self, n: int) -> dict[str, int]:
+        if self.n_per_group is not None:
+            return {"n_per_group": n}
+        return dict(zip(("n_treatment", "n_control"), map(int, self._sizes(np.asarray(float(n)))), strict=True))
+
+    @property
+    def nuisance(self) -> dict[str, Distribution]:
+        if self.sd is not None:
+            return {"sd": self.sd}
+        absent = Point(value=1.0)
+        return {"sd_treatment": self.sd_treatment or absent, "sd_control": self.sd_control or absent}
+
+    def _sizes(self, n: FloatArray) -> tuple[FloatArray, FloatArray]:
+        return group_sizes(n, self.n_treatment, self.n_control, 2)
+
+    def _sds(self, nuisance: Mapping[str, Any]) -> tuple[Any, Any]:
+        if self.sd is not None:
+            return nuisance["sd"], nuisance["sd"]
+        return nuisance["sd_treatment"], nuisance["sd_control"]
+
+    def outcomes(
+        self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy
+    ) -> NormalLine:
+        treated, control = (size[:, None] for size in self._sizes(n))
+        sd_treated, sd_control = self._sds(nuisance)
+        variances = sd_treated**2 / treated, sd_control**2 / control
+        se = np.sqrt(variances[0] + variances[1])
+        if self.analysis == "z":
+            return known_error(se, null)
+        if self.analysis == "t":
+            return student_line(se, (treated + control - 2)[:, 0], null, accuracy)
+        return _welch_line(se, variances, (treated - 1, control - 1), null, accuracy)
+
+    def forward(
+        self, pm: Any, effect: Any, nuisance: Mapping[str, Any], n: int, shape: tuple[int, ...]
+    ) -> dict[str, Any]:
+        treated, control = (float(size) for size in self._sizes(np.asarray(float(n))))
+        sds = self._sds(nuisance)
+        se = (sds[0] ** 2 / treated + sds[1] ** 2 / control) ** 0.5
+        data = {"difference": pm.Normal("difference", effect, se, shape=shape)}
+        if self.analysis != "z":
+            for arm, sd, size in (("treatment", sds[0], treated), ("control", sds[1], control)):
+                data[f"variance_{arm}"] = drawn_variance(pm, f"variance_{arm}", sd, size - 1, shape)
+        return data
+
+    def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> NormalAnalysis:
+        treated, control = (float(size) for size in self._sizes(np.asarray(float(n))))
+        estimate = data["difference"]
+        if self.analysis == "z":
+            sds = self._sds(nuisance)
+            return NormalAnalysis(estimate, np.sqrt(sds[0] ** 2 / treated + sds[1] ** 2 / control), np.inf)
+        variances = data["variance_treatment"], data["variance_control"]
+        if self.analysis == "t":
+            df = treated + control - 2
+            pooled = ((treated - 1) * variances[0] + (control - 1) * variances[1]) / df
+            return NormalAnalysis(estimate, np.sqrt(pooled * (1 / treated + 1 / control)), df)
+        a, b = variances[0] / treated, variances[1] / control
+        return NormalAnalysis(estimate, np.sqrt(a + b), _satterthwaite(a, b, treated - 1, control - 1))
+
+
+def _satterthwaite(a: FloatArray, b: FloatArray, df_a: FloatArray | float, df_b: FloatArray | float) -> FloatArray:
+    """Approximate degrees of freedom of a + b, each a variance of a mean (Satterthwaite 1946, Welch 1947)."""
+    return (a + b) ** 2 / (a * a / df_a + b * b / df_b)
+
+
+def _welch_line(
+    se: FloatArray,
+    variances: tuple[FloatArray, FloatArray],
+    df: tuple[FloatArray, FloatArray],
+    null: float,
+    accuracy: Accuracy,
+) -> NormalLine:
+    """Both sample sds are auxiliary: every pair of their nodes has its own standard error and degrees of freedom."""
+    smallest = np.minimum(*df)[:, 0]
+    critical = critical_value(smallest, accuracy.finest_level)
+    sides = [sd_ratio_nodes(d[:, 0], critical, accuracy.auxiliary, rough=True) for d in df]
+    pairs = [np.broadcast_arrays(a[:, :, None], b[:, None, :]) for a, b in zip(*sides, strict=True)]
+    (u, v), (weight_u, weight_v) = ([x.reshape(len(x), -1) for x in pair] for pair in pairs)
+    a, b = variances[0][..., None] * u[:, None, :] ** 2, variances[1][..., None] * v[:, None, :] ** 2
+    return NormalLine(
+        se=se,
+        estimated_se=np.sqrt(a + b),
+        df=_satterthwaite(a, b, df[0][..., None], df[1][..., None]),
+        weight=weight_u * weight_v,
+        null=null,
+    )

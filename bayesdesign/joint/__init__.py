@@ -1,0 +1,1 @@
+"""The joint table of truths and decisions, by two routes."""

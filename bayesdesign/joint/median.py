@@ -1,0 +1,89 @@
+"""Median exaggeration: where half of the claims of a real effect lie, as a multiple of that effect."""
+
+from collections.abc import Callable
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from bayesdesign.core.arrays import FloatArray
+
+if TYPE_CHECKING:
+    from bayesdesign.joint.integration import Setting, Truths
+
+FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
+ROUNDS = (1e-3, 1e-7, 1e-12)  # width in log multiple at which each round of the search stops
+
+
+def median_multiple(setting: "Setting") -> FloatArray:
+    """Least multiple c with P(claim, |estimate - null| <= c |distance|, not exactly null) at half of P(claim, not exactly null), (N,).
+
+    Sought three times, each with panels that end on the kinks at the multiple found before. NaN where nothing is claimed,
+    infinite where no multiple suffices.
+    """
+    from bayesdesign.joint.integration import truth_nodes
+
+    excess, claimed = _excess(setting, truth_nodes(setting))
+    low, high = _bracket(excess, claimed)
+    for close in ROUNDS:
+        found = _root(excess, low, high, close)
+        excess, claimed = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(found, -FARTHEST, FARTHEST))))
+        low, high = found - 2 * close, found + 2 * close
+        low, high = np.where(excess(low) > 0, low - 0.2, low), np.where(excess(high) < 0, high + 0.2, high)
+    found = _root(excess, low, high, ROUNDS[-1])
+    with np.errstate(over="ignore"):
+        return np.where(claimed > 0, np.where(found > FARTHEST / 2, np.inf, np.exp(found)), np.nan)
+
+
+def _excess(setting: "Setting", truths: "Truths") -> tuple[Callable[[FloatArray], FloatArray], FloatArray]:
+    """P(claim within the multiple) minus half of P(claim), as a function of the log multiple (N,); and P(claim)."""
+    from bayesdesign.joint.integration import distances
+
+    study = setting.study
+    claims = [setting.regions[i] for i, name in enumerate(study.rule.decisions[:-1]) if name in study.rule.claims]
+    distance, exactly_null = distances(study, truths.effect)
+    weight = np.where(exactly_null, 0.0, truths.weight)
+    reach = np.abs(distance)
+    claimed = (weight * setting.outcomes.probabilities(truths.effect, claims)[0].sum(axis=-1)).sum(axis=(1, 2))
+
+    def excess(log_multiple: FloatArray) -> FloatArray:
+        within = reach * np.exp(log_multiple)[:, None, None]
+        mass = setting.outcomes.probabilities_within(truths.effect, claims, within)
+        return np.asarray((weight * mass).sum(axis=(1, 2)) - claimed / 2)
+
+    return excess, claimed
+
+
+def _bracket(excess: Callable[[FloatArray], FloatArray], claimed: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Log multiples on either side of the root, by steps that double."""
+    low, high, step = np.full(len(claimed), -0.5), np.full(len(claimed), 0.5), 1.0
+    while step < FARTHEST:
+        too_high = (excess(low) >= 0) & (claimed > 0)
+        too_low = (excess(high) < 0) & (claimed > 0)
+        if not (too_high | too_low).any():
+            break
+        low, high = np.where(too_high, low - step, low), np.where(too_low, high + step, high)
+        step *= 2
+    return low, high
+
+
+def _root(
+    excess: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray, close: float
+) -> FloatArray:
+    """Root of an increasing function in each bracket: false position, halving a retained end (Dowell and Jarratt 1971)."""
+    at_low, at_high = excess(low), excess(high)
+    last = np.zeros(len(low))
+    for _ in range(60):
+        gap = at_high - at_low
+        share = np.where(gap > 0, at_high / np.where(gap > 0, gap, 1.0), 0.5)
+        middle = high - np.clip(share, 1e-3, 1 - 1e-3) * (high - low)
+        if (high - low).max() < close:
+            return middle
+        value = excess(middle)
+        up = value >= 0
+        at_high, at_low = (
+            np.where(up, value, np.where(last < 0, at_high / 2, at_high)),
+            np.where(up, np.where(last > 0, at_low / 2, at_low), value),
+        )
+        high, low = np.where(up, middle, high), np.where(up, low, middle)
+        last = np.where(up, 1.0, -1.0)
+    return (low + high) / 2
