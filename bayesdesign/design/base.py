@@ -37,6 +37,8 @@ class Outcomes(abc.ABC):
     The estimate and its distance from the null are on the working scale (the logarithm, for ratios).
     """
 
+    stepped: ClassVar[bool] = False  # probabilities_within jumps where a count enters the reach, and landmarks name every jump
+
     @abc.abstractmethod
     def test(self, value: float, level: float, side: Side) -> Region:
         """Where the one-sided test of "the effect is not on this side of `value`" rejects at `level`."""
@@ -168,6 +170,11 @@ class Design(abc.ABC):
         """Smallest and largest effect that can exist at each nuisance node, both (M,)."""
         size = np.shape(next(iter(nuisance.values()))) if nuisance else (1,)
         return np.full(size, 0.0 if self.ratio_scale else -np.inf), np.full(size, np.inf)
+
+    def nuisance_kinks(self, effects: FloatArray) -> dict[str, FloatArray]:
+        """Values of nuisance parameters at which one of these effects begins or ceases to be possible."""
+        del effects
+        return {}
 
     def treatment_of(self, effect: FloatArray, nuisance: Mapping[str, FloatArray]) -> FloatArray:
         """The treated arm's parameter that an effect implies; for families whose prior may be on both arms."""

@@ -79,6 +79,19 @@ class NormalLine(Outcomes):
         mass, slope = (mass * weight).sum(axis=-1), (slope * weight).sum(axis=-1) / np.sqrt(2 * np.pi)
         return mass, (theta - self.null) * mass + self.se[rows, :, None] * slope
 
+    def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
+        # absolute accuracy is enough here, and half of the normal integrals do not depend on the auxiliary node
+        theta, se = self.working(effect)[..., None], self.se[..., None, None]
+        near, far = ((self.null + sign * reach[..., None] - theta) / se for sign in (-1, 1))
+        at_near, at_far = special.ndtr(near), special.ndtr(far)
+        total = np.zeros(effect.shape)
+        for region in regions:
+            for lower, upper in zip(region.lower, region.upper, strict=True):
+                low = at_near if np.isneginf(lower).all() else np.maximum(at_near, special.ndtr((lower[..., None, :] - theta) / se))
+                high = at_far if np.isposinf(upper).all() else np.minimum(at_far, special.ndtr((upper[..., None, :] - theta) / se))
+                total += (np.maximum(high - low, 0.0) * self.weight[:, None, None, :]).sum(axis=-1)
+        return total
+
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
         cumulative = np.cumsum(self.weight, axis=1)
         picks = [np.argmax(cumulative > q * cumulative[:, -1:], axis=1) for q in (0.02, 0.5, 0.98)]

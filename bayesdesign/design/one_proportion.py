@@ -78,6 +78,8 @@ class OneProportion(Design):
 class BinomialCount(Outcomes):
     """The outcome is the count x among n (N,); the estimate is x / n."""
 
+    stepped: ClassVar[bool] = True
+
     n: FloatArray
     null: float
     exact: bool
@@ -133,13 +135,16 @@ class BinomialCount(Outcomes):
         return mass, effect * fewer - self.null * mass
 
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
-        del multiple  # steps at every count: no panel can end on all of them
         n = self.n[:, None, None]
         points = [np.full((len(self.n), 1, 1), self.null)]
         for bound in (bound for region in regions for side in (region.lower, region.upper) for bound in side):
             share = np.clip(np.where(np.isinf(bound), np.nan, bound) / n, 0.0, 1.0)
             se = np.sqrt(np.maximum(share * (1 - share), 1 / n) / n)
             points.append(share + se * np.array([-7.0, -3.5, -1.2, 1.2, 3.5, 7.0]))
+        if multiple is not None:
+            counts = np.arange(self.n.max() + 1) / n
+            steps = (np.where(counts <= 1, counts, self.null) - self.null) / multiple[:, None, None]
+            points += [self.null + steps, self.null - steps]
         return np.clip(np.nan_to_num(np.concatenate(points, axis=2), nan=self.null), 0.0, 1.0)
 
 

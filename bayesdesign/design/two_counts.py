@@ -91,7 +91,7 @@ class TwoCounts(Outcomes):
             pmf_y = _pmf(log_choose_y, y, self.sizes[1], control)
             keep = pmf_y > 1e-18
             for rows in _blocks(effect.shape[2], len(y)):
-                share = self.treatment_of(effect[0, m, rows], control)
+                share = np.clip(self.treatment_of(effect[0, m, rows], control), 0.0, 1.0)
                 tails = _CountTails.build(self.sizes[0], share, self.transform)
                 for i in range(len(lower)):
                     low, high = (

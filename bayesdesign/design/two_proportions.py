@@ -85,6 +85,11 @@ class TwoProportions(Design):
             top = 1 / control if self.scale == "ratio" else np.full_like(control, np.inf)
         return np.zeros_like(control), top
 
+    def nuisance_kinks(self, effects: FloatArray) -> dict[str, FloatArray]:
+        if self.scale == "difference":
+            return {"control": np.concatenate([-effects, 1 - effects])}
+        return {"control": 1 / effects[effects > 1]} if self.scale == "ratio" else {}
+
     def treatment_of(self, effect: FloatArray, nuisance: Mapping[str, Any]) -> FloatArray:
         control = nuisance["control"]
         if self.scale == "difference":

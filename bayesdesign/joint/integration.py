@@ -73,13 +73,22 @@ def set_up(study: Study, n: Sequence[int | None], level: int) -> Setting:
     accuracy = Accuracy(
         effect=effect, nuisance=nuisance_order, auxiliary=auxiliary, finest_level=study.rule.finest_level
     )
-    nuisance, weight = nuisance_nodes(study.design.nuisance, nuisance_order, panels=level >= PANELS_FROM)
+    nuisance, weight = nuisance_nodes(
+        study.design.nuisance, nuisance_order, panels=level >= PANELS_FROM, kinks=_nuisance_kinks(study)
+    )
     sizes = np.array([1.0 if k is None else float(k) for k in n])
     outcomes = study.design.outcomes(sizes, nuisance, study.null, accuracy)
     return Setting(
         study=study, n=tuple(n), level=level, nuisance=nuisance, nuisance_weight=weight, outcomes=outcomes,
         regions=study.rule.regions(outcomes, study.null),
     )
+
+
+def _nuisance_kinks(study: Study) -> dict[str, FloatArray]:
+    if study.prior.effect is None:
+        return {}
+    belief = study.prior.effect
+    return study.design.nuisance_kinks(np.unique([e for e in (*belief.support, *belief.atoms()[0]) if np.isfinite(e)]))
 
 
 @final

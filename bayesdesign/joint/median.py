@@ -11,27 +11,40 @@ if TYPE_CHECKING:
     from bayesdesign.joint.integration import Setting, Truths
 
 FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
-ROUNDS = (1e-3, 1e-7, 1e-12)  # width in log multiple at which each round of the search stops
+ROUNDS = (1e-3, 1e-6)  # width in log multiple at which a round of the search stops and the panels are laid anew
+CLOSE = 1e-11  # the same for the last round
 
 
 def median_multiple(setting: "Setting") -> FloatArray:
     """Least multiple c with P(claim, |estimate - null| <= c |distance|, not exactly null) at half of P(claim, not exactly null), (N,).
 
-    Sought three times, each with panels that end on the kinks at the multiple found before. NaN where nothing is claimed,
+    Sought in rounds, each with panels that end on the kinks at the multiple found before. NaN where nothing is claimed,
     infinite where no multiple suffices.
     """
     from bayesdesign.joint.integration import truth_nodes
 
     excess, claimed = _excess(setting, truth_nodes(setting))
-    low, high = _bracket(excess, claimed)
+    low, high = _bracket(excess, claimed, np.zeros(len(claimed)), 0.5)
+    if setting.outcomes.stepped:
+        return _finish(_root(lambda at: _relaid(setting, at), low, high, CLOSE), claimed)
     for close in ROUNDS:
         found = _root(excess, low, high, close)
         excess, claimed = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(found, -FARTHEST, FARTHEST))))
-        low, high = found - 2 * close, found + 2 * close
-        low, high = np.where(excess(low) > 0, low - 0.2, low), np.where(excess(high) < 0, high + 0.2, high)
-    found = _root(excess, low, high, ROUNDS[-1])
+        low, high = _bracket(excess, claimed, found, 4 * close)
+    return _finish(_root(excess, low, high, CLOSE), claimed)
+
+
+def _relaid(setting: "Setting", at: FloatArray) -> FloatArray:
+    """The excess with panels that end on the jumps at this very multiple."""
+    from bayesdesign.joint.integration import truth_nodes
+
+    excess, _ = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(at, -FARTHEST, FARTHEST))))
+    return excess(at)
+
+
+def _finish(log_multiple: FloatArray, claimed: FloatArray) -> FloatArray:
     with np.errstate(over="ignore"):
-        return np.where(claimed > 0, np.where(found > FARTHEST / 2, np.inf, np.exp(found)), np.nan)
+        return np.where(claimed > 0, np.where(log_multiple > FARTHEST / 2, np.inf, np.exp(log_multiple)), np.nan)
 
 
 def _excess(setting: "Setting", truths: "Truths") -> tuple[Callable[[FloatArray], FloatArray], FloatArray]:
@@ -53,16 +66,18 @@ def _excess(setting: "Setting", truths: "Truths") -> tuple[Callable[[FloatArray]
     return excess, claimed
 
 
-def _bracket(excess: Callable[[FloatArray], FloatArray], claimed: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Log multiples on either side of the root, by steps that double."""
-    low, high, step = np.full(len(claimed), -0.5), np.full(len(claimed), 0.5), 1.0
+def _bracket(
+    excess: Callable[[FloatArray], FloatArray], claimed: FloatArray, start: FloatArray, step: float
+) -> tuple[FloatArray, FloatArray]:
+    """Log multiples on either side of the root, from `start` by steps that grow fourfold."""
+    low, high = start - step, start + step
     while step < FARTHEST:
         too_high = (excess(low) >= 0) & (claimed > 0)
         too_low = (excess(high) < 0) & (claimed > 0)
         if not (too_high | too_low).any():
             break
+        step *= 4
         low, high = np.where(too_high, low - step, low), np.where(too_low, high + step, high)
-        step *= 2
     return low, high
 
 

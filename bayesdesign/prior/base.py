@@ -45,7 +45,7 @@ class Distribution(abc.ABC):
 
         First and last leave less than about 1e-16 of the mass outside; every kink, jump and edge of the
         density is among them; near an infinite density or in a power tail they are spaced geometrically.
-        Where the density is infinite at an end other than 0 more is left outside, all of it within 1e-8 of
+        Where the density is infinite at an end other than 0 more is left outside, all of it within 1e-9 of
         the last break, because floats there are too coarse. Empty if all mass is in atoms.
         """
 

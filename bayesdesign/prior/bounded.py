@@ -16,8 +16,9 @@ from bayesdesign.prior.spacing import EDGE_RATIO, REST, TINY, even, smooth_power
 from bayesdesign.prior.stable import deviance, stirling_error
 
 # Nearest distance d of a panel to 1. Where the density is infinite there, rounding of x costs about
-# 1e-16 * d^(b - 1), and leaving the rest in one lump costs d^(b + 1): equal at 1e-8.
-NEAREST_POLE = 1e-8
+# 1e-16 * d^(b - 1), and leaving the rest in one lump costs d^(b + 1) / width of g; measured
+# for b = 0.5, 1e-9 keeps both below 1e-12. The balance moves with the square root of the width.
+NEAREST_POLE = 1e-9
 NEAREST_ONE = 1e-15
 _NOTHING = dict.fromkeys(("a", "b", "mean", "size"))
 
@@ -146,11 +147,8 @@ class Beta(Plain):
         a, b = self.shapes
         free_low, free_high = smooth_power(a), smooth_power(b)
         low = 0.0 if free_low else max(float(special.betaincinv(a, b, REST)), TINY)
-        high = (
-            1.0
-            if free_high
-            else 1 - max(float(special.betaincinv(b, a, REST)), NEAREST_ONE if b > 1 else NEAREST_POLE)
-        )
+        nearest = NEAREST_ONE if b > 1 else NEAREST_POLE * math.sqrt(2 * self.deviation())
+        high = 1.0 if free_high else 1 - max(float(special.betaincinv(b, a, REST)), nearest)
         widest = max(self.deviation(), 1.6 / (a + b))
 
         def step(x: float) -> float:

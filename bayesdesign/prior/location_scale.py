@@ -111,7 +111,8 @@ class StudentT(Plain):
         if self.df == 1:
             return self.location + self.scale * cauchy_quantile(p)
         p = np.asarray(p)
-        z = np.where(p == 0, -math.inf, np.where(p == 1, math.inf, special.stdtrit(self.df, p)))  # NaN at the ends
+        z = special.stdtrit(self.df, p)  # NaN at the ends
+        z = np.where(p == 0, -math.inf, np.where(p == 1, math.inf, z))
         return self.location + self.scale * z
 
     @property

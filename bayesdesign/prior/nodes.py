@@ -58,26 +58,34 @@ def _outside(
 
 
 def nuisance_nodes(
-    nuisance: Mapping[str, Distribution], order: int, *, panels: bool = False
+    nuisance: Mapping[str, Distribution],
+    order: int,
+    *,
+    panels: bool = False,
+    kinks: Mapping[str, FloatArray] | None = None,
 ) -> tuple[dict[str, FloatArray], FloatArray]:
     """Product nodes of independent nuisance parameters, each (M,), with weights (M,) that sum to 1.
 
     By default the `order`-point Gauss rule of each distribution itself, which is enough where the answer varies smoothly with
-    the parameter; with `panels`, composite panels of `order` nodes, for answers that bend sharply.
+    the parameter; with `panels`, or where `kinks` lie inside a distribution, composite panels of `order` nodes, for answers that bend sharply.
     """
     grids: list[FloatArray] = []
     weight = np.ones(1)
-    for belief in nuisance.values():
-        x, w = _one_nuisance(belief, order, panels)
+    for name, belief in nuisance.items():
+        cuts = (kinks or {}).get(name, np.empty(0))
+        cuts = cuts[(belief.cdf(cuts) > NEGLIGIBLE) & (belief.sf(cuts) > NEGLIGIBLE)]
+        x, w = _one_nuisance(belief, order, cuts, panels or cuts.size > 0)
         grids = [np.repeat(g, len(x)) for g in grids] + [np.tile(x, len(weight))]
         weight = np.repeat(weight, len(x)) * np.tile(w, len(weight))
     keep = weight > NEGLIGIBLE
     return dict(zip(nuisance, (g[keep] for g in grids), strict=True)), weight[keep] / weight[keep].sum()
 
 
-def _one_nuisance(belief: Distribution, order: int, panels: bool) -> tuple[FloatArray, FloatArray]:
+def _one_nuisance(
+    belief: Distribution, order: int, cuts: FloatArray, panels: bool
+) -> tuple[FloatArray, FloatArray]:
     everywhere = np.full(1, -np.inf), np.full(1, np.inf)
-    x, w = (a[0, 0] for a in variable_nodes(belief, np.empty((1, 1, 0)), *everywhere, order if panels else 12))
+    x, w = (a[0, 0] for a in variable_nodes(belief, cuts[None, None], *everywhere, order if panels else 12))
     keep = w > NEGLIGIBLE
     x, w = x[keep], w[keep] / w[keep].sum()
     if panels or len(x) <= order:

@@ -31,5 +31,5 @@ class Plain(Distribution):
 
 
 def _double(parameters: dict[str, float]) -> dict[str, np.float64]:
-    # PyTensor keeps a Python 30.0 in single precision, and then its log-gamma too: 3e-7 off for a t with 30 df.
+    # PyTensor keeps a Python 30.0 in single precision, then also its log-gamma: 3e-7 off for a t with 30 df.
     return {key: np.float64(value) for key, value in parameters.items()}

@@ -65,7 +65,8 @@ class Gamma(Plain):
         k = self.shape
         smooth = smooth_power(k)
         low = 0.0 if smooth else max(float(special.gammaincinv(k, REST)), TINY)
-        high = max(float(special.gammainccinv(k, REST)), 2 * low)
+        high = float(special.gammainccinv(k, REST))
+        high = high if high > low else 2 * low  # all mass below TINY
         widest = 1.25 * math.sqrt(max(k, 1.6))
         return walk(low, high, lambda y: widest if smooth else min(widest, (EDGE_RATIO - 1) * y)) / self.rate
 
@@ -131,8 +132,8 @@ class Lognormal(Plain):
     def breaks(self) -> FloatArray:
         # log x has its own singularity at 0, so no panel grows by more than 2.5, however wide the bell.
         step = min(SD_STEP, math.log(2.5) / self.log_sd)
-        reach = min(BELL_REACH, 650 / self.log_sd)  # e^650 still fits into a double after any sensible median
-        return self.median * np.exp(self.log_sd * even(-reach, reach, step))
+        log_points = math.log(self.median) + self.log_sd * even(-BELL_REACH, BELL_REACH, step)
+        return np.exp(log_points[np.abs(log_points) < -math.log(TINY)])  # others do not fit into a double
 
     def expectation(self) -> float:
         return self.median * math.exp(self.log_sd**2 / 2) if self.log_sd < 37 else math.inf

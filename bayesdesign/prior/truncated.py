@@ -206,8 +206,12 @@ class Truncated(Distribution):
             case Normal():
                 return self._draw_normal(self.base, pm, name, shape)
             case Plain():
-                natural = self.base.support  # where the window cuts nothing off, PyMC must not look for an end
-                ends = [None if end == nature else end for end, nature in zip((low, high), natural, strict=True)]
+                natural = (
+                    self.base.support
+                )  # where the window cuts nothing off, PyMC must not look for an end
+                ends = [
+                    None if end == nature else end for end, nature in zip((low, high), natural, strict=True)
+                ]
                 if ends == [None, None]:
                     return self.base.random_variable(pm, name, shape)
                 law = self.base.unnamed(pm)
@@ -218,12 +222,14 @@ class Truncated(Distribution):
     def _draw_normal(self, normal: Normal, pm: Any, name: str, shape: tuple[int, ...]) -> Any:
         """Inversion of PyMC's own normal cdf.
 
-        pm.TruncatedNormal draws in Python under numba, which warns at every compilation; PyMC's other truncated
-        distributions invert the cdf too. A window above the mean is mirrored, because only small probabilities keep
-        their digits: without that, a window from 6.5 sd gave 339,000 different values in a million draws.
+        pm.TruncatedNormal draws in Python under numba, which warns at every compilation; PyMC's other
+        truncated distributions invert the cdf too. A window above the mean is mirrored, because only small
+        probabilities keep their digits: otherwise 6.5 sd and more gave 339,000 different values in a million.
         """
         mirrored = self.low > normal.mean
-        low, high = (2 * normal.mean - self.high, 2 * normal.mean - self.low) if mirrored else (self.low, self.high)
+        low, high = (
+            (2 * normal.mean - self.high, 2 * normal.mean - self.low) if mirrored else (self.low, self.high)
+        )
         law = normal.unnamed(pm)
         first = pm.math.exp(pm.logcdf(law, np.float64(low))) if math.isfinite(low) else 0.0
         last = pm.math.exp(pm.logcdf(law, np.float64(high))) if math.isfinite(high) else 1.0

@@ -105,7 +105,8 @@ def _variable_faults(study: "Study") -> list[Fault]:
         where, (low, high) = "[prior] treatment", (design.treatment_of(low, nodes), design.treatment_of(high, nodes))
     outside = _outside(prior.variable, low, high)
     lost = float(weight @ outside)
-    if lost <= TRACE or (prior.variable.kind == "truncated" and lost < 0.5):
+    # a cut that the study asked for, and a single effect, are taken where they are possible
+    if lost <= TRACE or (prior.variable.kind in ("truncated", "point") and lost < 0.5):
         return []
     example = f"{low[0]:.4g} to {high[0]:.4g}" + (" (it depends on the nuisance parameters)" if len(weight) > 1 else "")
     return [

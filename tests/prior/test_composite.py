@@ -88,7 +88,7 @@ def test_truncated_normal_moments(low: float, high: float) -> None:
 
 
 def test_truncated_power_tails_have_exact_moments() -> None:
-    """Half of a t with 2.5 degrees of freedom: E|t| = 2 sqrt(n) / ((n - 1) B(n / 2, 1 / 2)), E t^2 = n / (n - 2)."""
+    """Half of a t with n = 2.5: E|t| = 2 sqrt(n) / ((n - 1) B(n / 2, 1 / 2)), E t^2 = n / (n - 2)."""
     n = 2.5
     half = Truncated(base=StudentT(df=n, location=3.0, scale=1.0), low=3.0, high=math.inf)
     first = 2 * math.sqrt(n) / (n - 1) * math.gamma((n + 1) / 2) / (math.gamma(n / 2) * math.sqrt(math.pi))
@@ -123,7 +123,7 @@ def test_beta_by_mean_and_size_is_the_same_beta() -> None:
         (Normal(mean=1.8, sd=1.5), "normal, mean 1.8, sd 1.5"),
         (Beta(mean=0.25, size=8.0), "beta, mean 0.25, size 8"),
         (Lognormal(median=2.0, log_sd=0.5), "lognormal, median 2, sd of the logarithm 0.5"),
-        (Truncated(base=Normal(mean=0.0, sd=1.0), low=0.0, high=math.inf), "normal, mean 0, sd 1, at least 0"),
+        (Truncated(base=Normal(mean=0.0, sd=1.0), low=0.0, high=5.0), "normal, mean 0, sd 1, cut to 0 to 5"),
         (Mixture(components=(Point(value=0.0), Exponential(rate=2.0)), weights=(0.3, 0.7)),
          "mixture: 30 % exactly 0; 70 % exponential, rate 2"),
     ],

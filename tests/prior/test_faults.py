@@ -74,8 +74,8 @@ def test_weights_are_scaled_when_their_sum_is_nearly_one() -> None:
 
 def test_kinds_are_the_names_in_study_files() -> None:
     assert [distribution.kind for distribution in DISTRIBUTIONS] == [
-        "normal", "student_t", "cauchy", "gamma", "lognormal", "half_normal", "exponential", "uniform", "beta",
-        "histogram", "point", "mixture",
+        "normal", "student_t", "cauchy", "gamma", "lognormal", "half_normal", "exponential", "uniform",
+        "beta", "histogram", "point", "mixture",
     ]  # fmt: skip
     assert Truncated.kind == "truncated"
     assert Truncated not in DISTRIBUTIONS

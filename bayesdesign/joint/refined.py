@@ -1,0 +1,126 @@
+"""The integration route with its error: the table is computed on finer and finer nodes until the readings stand still."""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from typing import final
+
+import numpy as np
+
+from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.errors import StudyError
+from bayesdesign.joint.integration import LEVELS, integrate
+from bayesdesign.joint.numbers import POWER_LEVELS, Number, Numbers, missing
+from bayesdesign.joint.table import Cells, Joint, cells
+from bayesdesign.measures.ratios import Ratio, planning_readings, readings
+from bayesdesign.prior.point import Point
+from bayesdesign.study.study import Prior, Study
+
+GOAL = 1e-9  # change from one refinement to the next at which the route stops by default
+ROUNDING = 1e-13  # what accumulates in sums of some hundred terms, relative to the condition's probability
+
+type Reader = Callable[[Cells, Study], dict[str, Ratio]]
+
+
+def integrated(study: Study, n: Sequence[int | None], tolerance: float) -> Numbers:
+    """Every quantity of the study at these sizes, by integration."""
+    main = refine(study, n, readings, tolerance)
+    by_name = dict(main.numbers)
+    by_name |= _planning(study, n, tolerance)
+    by_name |= _distributions(study, main)
+    return Numbers(by_name=by_name, cells=main.cells, cells_error=main.cells_error, joint=main.joint)
+
+
+@final
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Refined:
+    """Ratio readings at the last level, their change from the level before, and the tables of both levels."""
+
+    numbers: dict[str, Number]
+    cells: FloatArray
+    cells_error: FloatArray
+    joint: Joint
+    previous: Joint
+
+
+def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float) -> Refined:
+    """Raise the level until no reading changes by more than the goal, or the last level is reached."""
+    goal = min(GOAL, tolerance)
+    previous = integrate(study, n, 0)
+    before = cells(previous)
+    for level in range(1, len(LEVELS)):
+        joint = integrate(study, n, level)
+        now = cells(joint)
+        numbers = _with_errors(read(now, study), read(before, study))
+        cells_error = np.abs(now.by_state - before.by_state)[:, 0] + ROUNDING
+        # a ratio under a rare condition may never reach the goal; the cells it is made of must
+        if cells_error.max() <= goal and all(
+            np.nanmax(np.where(_settled(number, goal), 0.0, 1.0)) == 0 for number in numbers.values()
+        ):
+            break
+        if level + 1 < len(LEVELS):
+            previous, before = joint, now
+    return Refined(numbers=numbers, cells=now.by_state[:, 0], cells_error=cells_error, joint=joint, previous=previous)
+
+
+def _settled(number: Number, goal: float) -> FloatArray:
+    """Whether the error is within the goal, relative to the number, or cannot be brought there because its condition is rare."""
+    scale = np.maximum(1.0, np.abs(np.nan_to_num(number.value))) / np.maximum(np.minimum(number.weight, 1.0), 1e-4)
+    return np.asarray(~np.isfinite(number.value) | (number.error <= goal * scale))
+
+
+def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio]) -> dict[str, Number]:
+    numbers = {}
+    for name, ratio in now.items():
+        value, old = ratio.value[:, 0], before[name].value[:, 0]
+        weight = ratio.denominator[:, 0]
+        with np.errstate(invalid="ignore", divide="ignore"):
+            rounding = ROUNDING * np.maximum(1.0, np.abs(value)) / np.minimum(1.0, weight)
+            numbers[name] = Number(value, np.abs(value - old) + rounding, ratio.why_null, weight)
+    return numbers
+
+
+def _planning(study: Study, n: Sequence[int | None], tolerance: float) -> dict[str, Number]:
+    names = ("power_at_planning_value", "type_s_at_planning_value", "exaggeration_at_planning_value")
+    fixed = at_planning_value(study)
+    if isinstance(fixed, str):
+        return {name: missing(len(n), fixed) for name in names}
+    numbers = refine(fixed, n, planning_readings, tolerance).numbers
+    if study.is_null(study.effect.planning_value or np.nan):
+        why = "the planning value is the null itself"
+        numbers |= {name: missing(len(n), why) for name in names[1:]}
+    return numbers
+
+
+def at_planning_value(study: Study) -> Study | str:
+    """The study with its effect fixed at the planning value, or the sentence that says why there is none."""
+    value = study.effect.planning_value
+    if value is None:
+        return "[effect] planning_value is not given"
+    try:
+        return replace(study, prior=Prior(effect=Point(value=value)))
+    except StudyError:
+        return "the planning value is impossible for part of the nuisance prior"
+
+
+def _distributions(study: Study, main: Refined) -> dict[str, Number]:
+    """The median exaggeration and the quantiles of power, which are no ratios of sums."""
+    ratio = main.numbers["exaggeration_ratio"]
+    why = ratio.why_null
+    if not np.isfinite(study.prior.variable.expectation()):
+        why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
+        ratio = missing(len(ratio.value), why)
+    now, before = main.joint, main.previous
+    median = now.median_multiple()
+    power = now.power_quantiles(POWER_LEVELS)
+    return {
+        "exaggeration_ratio": ratio,
+        "exaggeration_median": Number(
+            median, _change(median, before.median_multiple()), "the rule never claims an effect that is not exactly null"
+        ),
+        "power_quantiles": Number(power, np.abs(power - before.power_quantiles(POWER_LEVELS)) + ROUNDING),
+    }
+
+
+def _change(now: FloatArray, before: FloatArray) -> FloatArray:
+    with np.errstate(invalid="ignore"):
+        return np.abs(now - before) + 1e-11 * np.maximum(1.0, np.abs(now))
