@@ -1,5 +1,7 @@
 """Binomial probabilities for arrays of counts, by the incomplete beta function; right at the ends, quiet outside them."""
 
+from functools import lru_cache
+
 import numpy as np
 from scipy import special
 
@@ -30,3 +32,9 @@ def between(first: FloatArray, last: FloatArray, n: FloatArray, p: FloatArray) -
 def log_choose(n: FloatArray, k: FloatArray) -> FloatArray:
     """log of n over k."""
     return np.asarray(special.gammaln(n + 1) - special.gammaln(k + 1) - special.gammaln(n - k + 1))
+
+
+@lru_cache(maxsize=64)
+def log_choose_row(n: int) -> FloatArray:
+    """log of n over k for every k from 0 to n."""
+    return log_choose(np.asarray(float(n)), np.arange(n + 1.0))

@@ -39,9 +39,16 @@ class Outcomes(abc.ABC):
 
     stepped: ClassVar[bool] = False  # probabilities_within jumps where a count enters the reach, and landmarks name every jump
 
+    rough_within: ClassVar[bool] = False  # it jumps at more counts than landmarks could name
+
     @abc.abstractmethod
     def test(self, value: float, level: float, side: Side) -> Region:
         """Where the one-sided test of "the effect is not on this side of `value`" rejects at `level`."""
+
+    @property
+    def work(self) -> int:
+        """About how many elements `measure` works on for each truth."""
+        return 1
 
     def two_sided_test(self, value: float, level: float, tails: Tails) -> tuple[Region, Region]:
         """Where the two-sided test rejects: (towards higher, towards lower). Central: half the level in each tail."""

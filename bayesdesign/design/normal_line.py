@@ -41,6 +41,10 @@ class NormalLine(Outcomes):
         centre = float(self.working(np.asarray(value)))
         return Region.above(centre + reach) if side == "higher" else Region.below(centre - reach)
 
+    @property
+    def work(self) -> int:
+        return self.weight.shape[1]
+
     def null_outcome(self) -> FloatArray:
         return np.full((1, 1, 1), self.null)
 

@@ -2,13 +2,13 @@
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
-from typing import final
+from typing import ClassVar, final
 
 import numpy as np
 from scipy import special
 
 from bayesdesign.core.arrays import BoolArray, FloatArray
-from bayesdesign.core.binomial import log_choose
+from bayesdesign.core.binomial import log_choose_row
 from bayesdesign.core.errors import NotOffered
 from bayesdesign.core.region import Region
 from bayesdesign.core.search import least_count
@@ -26,6 +26,8 @@ class TwoCounts(Outcomes):
     One sample size at a time (N = 1). For each y the tests reject beyond one x on either side, found by bisection; that they do
     is proved for the conditional test and checked by full enumeration in the tests for the z tests.
     """
+
+    rough_within: ClassVar[bool] = True
 
     sizes: tuple[float, float]
     control: FloatArray
@@ -63,6 +65,11 @@ class TwoCounts(Outcomes):
         below = least_count(lambda x: x >= lower[(x + y).astype(int)], zero, top)
         return Region.above((above - 0.5)[None, None]), Region.below((below - 0.5)[None, None])
 
+    @property
+    def work(self) -> int:
+        low, high = _window(self.sizes[0], np.array([0.5]))
+        return int(high[0] - low[0]) + len(self._y())
+
     def _count_of(self, estimate: FloatArray) -> FloatArray:
         """Real x whose estimate (with y on the last axis) is this; outside 0..n beyond the least or largest estimate."""
         target = estimate + self.transform(self._y(), self.sizes[1])
@@ -85,13 +92,14 @@ class TwoCounts(Outcomes):
         mass, moment = np.zeros(shape), np.zeros(shape)
         y = self._y()
         lower, upper = (np.broadcast_to(b, (*b.shape[:4], len(y))) for b in (lower, upper))
-        log_choose_y = log_choose(np.asarray(self.sizes[1]), y)
+        log_choose_y = log_choose_row(int(self.sizes[1]))[y.astype(np.int64)]
         centre = self.transform(y, self.sizes[1]) + self.null
         for m, control in enumerate(self.control):
             pmf_y = _pmf(log_choose_y, y, self.sizes[1], control)
             keep = pmf_y > 1e-18
             for rows in _blocks(effect.shape[2], len(y)):
                 share = np.clip(self.treatment_of(effect[0, m, rows], control), 0.0, 1.0)
+                share, back = np.unique(share, return_inverse=True) if lower.shape[3] == 1 else (share, slice(None))
                 tails = _CountTails.build(self.sizes[0], share, self.transform)
                 for i in range(len(lower)):
                     low, high = (
@@ -99,8 +107,8 @@ class TwoCounts(Outcomes):
                         for b in (lower, upper)
                     )
                     zeroth, first = tails.between(low, high)
-                    mass[i, 0, m, rows] = zeroth @ pmf_y[keep]
-                    moment[i, 0, m, rows] = first @ pmf_y[keep] - zeroth @ (pmf_y * centre)[keep]
+                    mass[i, 0, m, rows] = (zeroth @ pmf_y[keep])[back]
+                    moment[i, 0, m, rows] = (first @ pmf_y[keep] - zeroth @ (pmf_y * centre)[keep])[back]
         return mass, moment
 
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
@@ -137,7 +145,7 @@ class _CountTails:
         width = int((high - low).max()) + 1
         start = np.minimum(low, n + 1 - width)[:, None]
         x = start + np.arange(width)
-        pmf = _pmf(log_choose(np.asarray(n), x), x, n, share[:, None])
+        pmf = _pmf(log_choose_row(int(n))[x.astype(np.int64)], x, n, share[:, None])
         value = pmf * transform(x, n)
         return cls(start, _up(pmf), _down(pmf), _up(value), _down(value))
 

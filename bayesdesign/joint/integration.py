@@ -9,17 +9,14 @@ import numpy as np
 from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.region import Region
 from bayesdesign.design.base import Accuracy, Outcomes
-from bayesdesign.joint.median import median_multiple
-from bayesdesign.joint.power import power_quantiles
 from bayesdesign.joint.table import Joint
 from bayesdesign.prior.nodes import nuisance_nodes, variable_nodes
 from bayesdesign.study.study import Study
 
-EVERYTHING = Region.between(np.full((1, 1, 1), -np.inf), np.full((1, 1, 1), np.inf))
-
 # Nodes per panel at each refinement: (effect, nuisance, auxiliary). A result is compared with the level before it.
-LEVELS = ((8, 8, 12), (12, 12, 16), (18, 18, 22), (24, 5, 28), (32, 9, 34))
-PANELS_FROM = 3  # level from which nuisance parameters are integrated by composite panels
+LEVELS = ((8, 8, 12), (12, 12, 16), (16, 18, 22), (20, 27, 28), (24, 5, 34), (32, 9, 40))
+WEIGHTLESS = 1e-18
+PANELS_FROM = 4  # level from which nuisance parameters are integrated by composite panels
 
 
 @final
@@ -115,6 +112,8 @@ def truth_nodes(setting: Setting, cuts: Sequence[float] = (), multiple: FloatArr
     # impossible pairs are cut off and the rest scaled up (the study was refused if more than a trace is cut)
     weight = weight / weight.sum(axis=(1, 2), keepdims=True) * (1 - study.prior.probability_null)
     effect = setting.to_effect(variable)
+    # nodes without weight (empty panels, far tails) all become the null, so that a design need not work them out one by one
+    effect = np.where(weight > WEIGHTLESS, effect, study.null)
     if study.prior.probability_null > 0:
         null_weight = study.prior.probability_null * np.broadcast_to(setting.nuisance_weight[:, None], (rows, columns, 1))
         effect = np.concatenate([np.full((rows, columns, 1), study.null), effect], axis=2)
@@ -131,13 +130,12 @@ def _boundaries(study: Study) -> list[float]:
 
 
 def integrate(study: Study, n: Sequence[int | None], level: int) -> Joint:
-    """The joint table of a study at these sizes, on one level of refinement (0 to 3)."""
+    """The joint table of a study at these sizes, on one level of refinement of `LEVELS`."""
     setting = set_up(study, n, level)
     truths = truth_nodes(setting)
     probability, absolute = setting.decisions(truths.effect)
-    total = setting.outcomes.probabilities(truths.effect, [EVERYTHING])[1]
     probability = np.concatenate([probability, np.maximum(1 - probability.sum(-1, keepdims=True), 0.0)], axis=-1)
-    absolute = np.concatenate([absolute, np.maximum(total - absolute.sum(-1, keepdims=True), 0.0)], axis=-1)
+    absolute = np.concatenate([absolute, np.zeros((*absolute.shape[:-1], 1))], axis=-1)
     rows = len(setting.n)
     distance, exactly_null = distances(study, truths.effect)
     shape = truths.effect.shape
@@ -153,9 +151,8 @@ def integrate(study: Study, n: Sequence[int | None], level: int) -> Joint:
         weight=truths.weight.reshape(rows, -1),
         probability=probability.reshape(rows, -1, probability.shape[-1]),
         absolute=absolute.reshape(rows, -1, probability.shape[-1]),
+        work=setting.outcomes.work,
         limit=study.rule.limit(distance).reshape(rows, -1, probability.shape[-1]),
-        median_multiple=lambda: median_multiple(setting),
-        power_quantiles=lambda levels: power_quantiles(setting, levels),
     )
 
 

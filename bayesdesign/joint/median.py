@@ -12,6 +12,7 @@ if TYPE_CHECKING:
 
 FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
 ROUNDS = (1e-3, 1e-6)  # width in log multiple at which a round of the search stops and the panels are laid anew
+ROUGH = 2e-5  # the same where the probability jumps at more counts than panels can end on
 CLOSE = 1e-11  # the same for the last round
 
 
@@ -27,6 +28,8 @@ def median_multiple(setting: "Setting") -> FloatArray:
     low, high = _bracket(excess, claimed, np.zeros(len(claimed)), 0.5)
     if setting.outcomes.stepped:
         return _finish(_root(lambda at: _relaid(setting, at), low, high, CLOSE), claimed)
+    if setting.outcomes.rough_within:
+        return _finish(_root(excess, low, high, ROUGH), claimed)
     for close in ROUNDS:
         found = _root(excess, low, high, close)
         excess, claimed = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(found, -FARTHEST, FARTHEST))))

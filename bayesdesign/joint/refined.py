@@ -6,17 +6,22 @@ from typing import final
 
 import numpy as np
 
-from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.core.errors import StudyError
-from bayesdesign.joint.integration import LEVELS, integrate
+from bayesdesign.joint.integration import LEVELS, integrate, set_up
+from bayesdesign.joint.median import median_multiple
 from bayesdesign.joint.numbers import POWER_LEVELS, Number, Numbers, missing
+from bayesdesign.joint.power import power_quantiles
 from bayesdesign.joint.table import Cells, Joint, cells
 from bayesdesign.measures.ratios import Ratio, planning_readings, readings
 from bayesdesign.prior.point import Point
 from bayesdesign.study.study import Prior, Study
 
-GOAL = 1e-9  # change from one refinement to the next at which the route stops by default
+GOAL = 5e-9  # change from one refinement to the next at which the route stops by default
+COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is enough
 ROUNDING = 1e-13  # what accumulates in sums of some hundred terms, relative to the condition's probability
+
+NO_CLAIM = "the rule never claims an effect that is not exactly null"
 
 type Reader = Callable[[Cells, Study], dict[str, Ratio]]
 
@@ -39,30 +44,33 @@ class Refined:
     cells: FloatArray
     cells_error: FloatArray
     joint: Joint
-    previous: Joint
+    level: int
 
 
 def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float) -> Refined:
     """Raise the level until no reading changes by more than the goal, or the last level is reached."""
     goal = min(GOAL, tolerance)
-    previous = integrate(study, n, 0)
-    before = cells(previous)
+    before = cells(integrate(study, n, 0))
     for level in range(1, len(LEVELS)):
         joint = integrate(study, n, level)
         now = cells(joint)
         numbers = _with_errors(read(now, study), read(before, study))
         cells_error = np.abs(now.by_state - before.by_state)[:, 0] + ROUNDING
-        # a ratio under a rare condition may never reach the goal; the cells it is made of must
-        if cells_error.max() <= goal and all(
-            np.nanmax(np.where(_settled(number, goal), 0.0, 1.0)) == 0 for number in numbers.values()
-        ):
+        if _all_settled(numbers, cells_error, goal):
+            break
+        costly = joint.effect.size * joint.work > COSTLY
+        if costly and _all_settled(numbers, cells_error, tolerance / 2):
             break
         if level + 1 < len(LEVELS):
-            previous, before = joint, now
-    return Refined(numbers=numbers, cells=now.by_state[:, 0], cells_error=cells_error, joint=joint, previous=previous)
+            before = now
+    return Refined(numbers=numbers, cells=now.by_state[:, 0], cells_error=cells_error, joint=joint, level=level)
 
 
-def _settled(number: Number, goal: float) -> FloatArray:
+def _all_settled(numbers: dict[str, Number], cells_error: FloatArray, goal: float) -> bool:
+    return bool(cells_error.max() <= goal and all(_settled(number, goal).all() for number in numbers.values()))
+
+
+def _settled(number: Number, goal: float) -> BoolArray:
     """Whether the error is within the goal, relative to the number, or cannot be brought there because its condition is rare."""
     scale = np.maximum(1.0, np.abs(np.nan_to_num(number.value))) / np.maximum(np.minimum(number.weight, 1.0), 1e-4)
     return np.asarray(~np.isfinite(number.value) | (number.error <= goal * scale))
@@ -109,15 +117,16 @@ def _distributions(study: Study, main: Refined) -> dict[str, Number]:
     if not np.isfinite(study.prior.variable.expectation()):
         why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
         ratio = missing(len(ratio.value), why)
-    now, before = main.joint, main.previous
-    median = now.median_multiple()
-    power = now.power_quantiles(POWER_LEVELS)
+    fine, coarse = set_up(study, main.joint.n, main.level), set_up(study, main.joint.n, main.level - 1)
+    power = power_quantiles(fine, POWER_LEVELS)
+    change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING
+    if fine.outcomes.rough_within:  # more nodes cost much and gain little where the probability jumps at every count
+        fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
+    median = median_multiple(fine)
     return {
         "exaggeration_ratio": ratio,
-        "exaggeration_median": Number(
-            median, _change(median, before.median_multiple()), "the rule never claims an effect that is not exactly null"
-        ),
-        "power_quantiles": Number(power, np.abs(power - before.power_quantiles(POWER_LEVELS)) + ROUNDING),
+        "exaggeration_median": Number(median, _change(median, median_multiple(coarse)), NO_CLAIM),
+        "power_quantiles": Number(power, change),
     }
 
 

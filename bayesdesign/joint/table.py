@@ -18,7 +18,7 @@ class Joint:
     """Axes: N sizes, T truths, D decisions. On the integration route a truth is a node, on the sampling route a draw.
 
     distance is effect minus null on the working scale, 0 exactly where the effect is exactly null. absolute is
-    E[|estimate - null|; decision | truth] on that scale. `median_multiple()` is the median of |estimate - null| / |distance| over claims
+    E[|estimate - null|; decision | truth] on that scale, for every decision but the one left over (0 there: no reading asks for it). `median_multiple()` is the median of |estimate - null| / |distance| over claims
     of an effect that is not exactly null, (N,); `power_quantiles(p)` the quantiles of P(F | truth) over truths not exactly null, (N, P).
     """
 
@@ -34,8 +34,9 @@ class Joint:
     probability: FloatArray  # (N, T, D), each row sums to 1
     absolute: FloatArray  # (N, T, D)
     limit: FloatArray  # (N, T, D) probability as n grows without bound
-    median_multiple: Callable[[], FloatArray]
-    power_quantiles: Callable[[tuple[float, ...]], FloatArray]
+    work: int = 1  # elements worked on for each truth
+    median_multiple: Callable[[], FloatArray] | None = None
+    power_quantiles: Callable[[tuple[float, ...]], FloatArray] | None = None
 
     def dataset(self) -> "xr.Dataset":
         """The table with labels: dimensions n, truth, decision; coordinates effect, distance, state, weight and nuisances."""

@@ -1,0 +1,1 @@
+"""From a result to text. Renderers compute nothing but roundings."""
