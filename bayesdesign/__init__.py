@@ -84,7 +84,8 @@ def __dir__() -> list[str]:
 
 class _Package(ModuleType):
     def __setattr__(self, name: str, value: object) -> None:
-        # The import system binds a loaded submodule to its name. Three of ours are named after the one function they hold,
+        # The import system binds a loaded submodule to its name. Three of ours are named after the one
+        # function they hold,
         # and what users call must stay the function, whoever loads the module first.
         if name in ("evaluate", "interpret", "size") and isinstance(value, ModuleType):
             value = getattr(value, name)

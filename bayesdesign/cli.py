@@ -14,7 +14,7 @@ import click
 
 from bayesdesign.core.errors import BayesdesignError, Fault, NotOffered, StudyError
 from bayesdesign.render import deliver
-from bayesdesign.render.words import safe
+from bayesdesign.render.typeset import safe
 
 if TYPE_CHECKING:
     from bayesdesign.study.study import Study
@@ -40,7 +40,12 @@ class Options:
 
     @property
     def colour(self) -> bool:
-        return self.out is None and sys.stdout.isatty() and not os.environ.get("NO_COLOR") and os.environ.get("TERM") != "dumb"
+        return (
+            self.out is None
+            and sys.stdout.isatty()
+            and not os.environ.get("NO_COLOR")
+            and os.environ.get("TERM") != "dumb"
+        )
 
     def working(self, what: str) -> AbstractContextManager[None]:
         from bayesdesign.render.progress import working
@@ -85,7 +90,9 @@ class ManyValues(click.Command):
             elif state == "inside" and _like_number(token):
                 spread.append(self.flag)
             elif state != "over":
-                state = {self.flag: "first"}.get(token, "inside" if state == "first" or token.startswith(f"{self.flag}=") else "outside")
+                state = {self.flag: "first"}.get(
+                    token, "inside" if state == "first" or token.startswith(f"{self.flag}=") else "outside"
+                )
             spread.append(token)
         return super().parse_args(ctx, spread)
 
@@ -113,24 +120,53 @@ class Size(click.ParamType[int]):
 def _options(*, computes: bool) -> Callable[[Callable[..., Any]], Callable[..., Any]]:
     """The common options, handed to the command as one `Options`."""
     shown = [
-        click.option("--json", "as_json", is_flag=True, help="One JSON document on standard output and nothing else."),
+        click.option(
+            "--json", "as_json", is_flag=True, help="One JSON document on standard output and nothing else."
+        ),
         click.option("--out", metavar="FILE", help="Write to FILE, whole or not at all."),
         click.option("--quiet", is_flag=True, help="No progress and no remarks on standard error."),
         click.option("--debug", is_flag=True, help="Show the traceback of a bug."),
     ]
     if computes:
         shown += [
-            click.option("--route", type=click.Choice(["integration", "sampling", "both"]), default="integration", show_default=True,
-                         help="How the decision table is computed; both compares the two."),
-            click.option("--seed", type=click.IntRange(0, 2**63 - 1), default=20260101, show_default=True, help="Seed of the sampling route."),
-            click.option("--draws", type=click.IntRange(1000, 10**9), default=1_000_000, show_default=True,
-                         help="Simulated studies of the sampling route."),
-            click.option("--tolerance", type=click.FloatRange(0, 1, min_open=True), default=1e-6, show_default=True,
-                         help="Integration error beyond which a number is refused."),
-        ]  # fmt: skip
+            click.option(
+                "--route",
+                type=click.Choice(["integration", "sampling", "both"]),
+                default="integration",
+                show_default=True,
+                help="How the decision table is computed; both compares the two.",
+            ),
+            click.option(
+                "--seed",
+                type=click.IntRange(0, 2**63 - 1),
+                default=20260101,
+                show_default=True,
+                help="Seed of the sampling route.",
+            ),
+            click.option(
+                "--draws",
+                type=click.IntRange(1000, 10**9),
+                default=1_000_000,
+                show_default=True,
+                help="Simulated studies of the sampling route.",
+            ),
+            click.option(
+                "--tolerance",
+                type=click.FloatRange(0, 1, min_open=True),
+                default=1e-6,
+                show_default=True,
+                help="Integration error beyond which a number is refused.",
+            ),
+        ]
 
     def decorate(command: Callable[..., Any]) -> Callable[..., Any]:
-        names = ("as_json", "out", "quiet", "debug", *(("route", "seed", "draws", "tolerance") if computes else ()))
+        names = (
+            "as_json",
+            "out",
+            "quiet",
+            "debug",
+            *(("route", "seed", "draws", "tolerance") if computes else ()),
+        )
 
         def wrapped(**given: Any) -> Any:
             options = Options(**{name: given.pop(name) for name in names})
@@ -171,9 +207,12 @@ def check(*, study: str, options: Options) -> Output:
     lines, messages = describe(read), messages_for(read, [])
     if options.as_json:
         document = {
-            "format": "bayesdesign/1", "command": "check", "study": study_entry(read), "says": lines,
+            "format": "bayesdesign/1",
+            "command": "check",
+            "study": study_entry(read),
+            "says": lines,
             "messages": [message.to_dict() for message in messages],
-        }  # fmt: skip
+        }
         return _json(document, options)
     from bayesdesign.render.to_terminal import check_text
 
@@ -183,7 +222,14 @@ def check(*, study: str, options: Options) -> Output:
 @program.command(cls=ManyValues)
 @_options(computes=True)
 @click.argument("study", metavar="STUDY.toml")
-@click.option("--n", "sizes", type=Size(), multiple=True, metavar="N...", help="One size or several, e.g. --n 40 80; default the study's own.")
+@click.option(
+    "--n",
+    "sizes",
+    type=Size(),
+    multiple=True,
+    metavar="N...",
+    help="One size or several, e.g. --n 40 80; default the study's own.",
+)
 def evaluate(*, study: str, sizes: tuple[int, ...], options: Options) -> Output:
     """The decision table and every measure, at one size or several."""
     read = _read(study)
@@ -213,17 +259,26 @@ def size(*, study: str, options: Options) -> Output:
 @click.argument("study", metavar="STUDY.toml")
 @click.option("--decision", metavar="NAME", help="Only the decision is known, e.g. not_reject.")
 @click.option("--estimate", type=float, metavar="X", help="The estimate of the effect, on its own scale.")
-@click.option("--se", type=float, metavar="S", help="Its standard error (of the logarithm, on a ratio scale).")
+@click.option(
+    "--se", type=float, metavar="S", help="Its standard error (of the logarithm, on a ratio scale)."
+)
 @click.option("--p-value", type=float, metavar="P", help="Only the p-value of the study's test is known.")
 @click.option("--data", metavar="FILE.csv", help="The study's data.")
 @click.option("--n", "n", type=Size(), metavar="N", help="The size the study had; default the planned one.")
-@click.option("--mass", type=click.FloatRange(0, 1, min_open=True, max_open=True), default=0.95, show_default=True,
-              help="Probability inside the reported interval.")  # fmt: skip
+@click.option(
+    "--mass",
+    type=click.FloatRange(0, 1, min_open=True, max_open=True),
+    default=0.95,
+    show_default=True,
+    help="Probability inside the reported interval.",
+)
 def interpret(*, study: str, options: Options, data: str | None, **known: Any) -> Output:
     """What the finished study's result is worth."""
     read = _read(study)
     if data is not None:
-        raise NotOffered("--data: reading raw data is not available yet; give --estimate and --se, --p-value or --decision")
+        raise NotOffered(
+            "--data: reading raw data is not available yet; give --estimate and --se, --p-value or --decision"
+        )
     with options.working("computing"):
         from bayesdesign.interpret import interpret as compute
 
@@ -263,7 +318,9 @@ def _read(path: str) -> "Study":
     try:
         return load_study(path)
     except OSError as failure:
-        raise StudyError([Fault(where="", problem=f"cannot be read ({failure.strerror or failure})")], path) from failure
+        raise StudyError(
+            [Fault(where="", problem=f"cannot be read ({failure.strerror or failure})")], path
+        ) from failure
 
 
 def _json(document: dict[str, Any], options: Options) -> Output:
@@ -285,7 +342,7 @@ def _answer(result: Any, options: Options, code: int = 0) -> Output:
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
-    """Run the command; returns the exit code and never lets an exception out, unless `--debug` is among the arguments."""
+    """Run the command and return the exit code; an exception gets out only with `--debug`."""
     given = list(sys.argv[1:] if arguments is None else arguments)
     try:
         answer = program.main(given, prog_name=NAME, standalone_mode=False)
@@ -301,7 +358,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except click.ClickException as wrong:
         return _complain([f"{NAME}: {wrong.format_message()}"], 2)
     except StudyError as wrong:
-        return _complain(str(wrong).split("\n"), wrong.exit_code)
+        return _complain(
+            [f"{wrong.file}: {fault}" if wrong.file else str(fault) for fault in wrong.faults],
+            wrong.exit_code,
+        )
     except BayesdesignError as wrong:
         return _complain([f"{NAME}: {wrong}"], wrong.exit_code)
     except MemoryError:

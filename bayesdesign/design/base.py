@@ -6,13 +6,13 @@ effects, A auxiliary nodes, I intervals of a region, R regions.
 """
 
 import abc
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, ClassVar, Literal
 
 import numpy as np
 
-from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.core.errors import NotOffered
 from bayesdesign.core.region import Region
 from bayesdesign.prior.base import Distribution
@@ -126,6 +126,7 @@ class Design(abc.ABC):
     """
 
     family: ClassVar[str]
+    example: ClassVar[str]  # its [effect], [design] and [prior] in TOML; the comments describe the [design] keys wherever that is needed
     minimum_n: ClassVar[int] = 1
     saw_tooth: ClassVar[bool] = False  # power is not monotone in n, because outcomes are discrete
     sizes_at_once: ClassVar[int] = 16  # how many n one `outcomes` call takes, to bound memory
@@ -143,6 +144,11 @@ class Design(abc.ABC):
     def group_sizes(self, n: int) -> dict[str, int]:
         """All sizes that follow from n, by their study-file key."""
         return {self.n_label: n}
+
+    def tooth(self, n: int) -> int:
+        """For designs with counts: a number of consecutive sizes around n that covers one up and down of the power."""
+        del n
+        return 1
 
     @property
     def ratio_scale(self) -> bool:
@@ -203,6 +209,20 @@ class Design(abc.ABC):
 
         `effect` and the nuisances are PyTensor variables that broadcast to `shape`, one simulated study for each element.
         """
+
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Callable[[Analysis], BoolArray]
+    ) -> Callable[[Any], Any]:
+        """A function from an effect to the log probability of a decision, all in PyTensor, for posteriors by NUTS.
+
+        `decides` says which analysed studies led to the decision. May add variables for what is not recorded (a sample variance)
+        to the model in context. Owes nothing to `outcomes`.
+        """
+        raise NotOffered(f"NUTS cannot use a decision alone for family '{self.family}'; use --route integration")
+
+    def symbolic_effect(self, treatment: Any, nuisance: Mapping[str, Any]) -> Any:
+        """`effect_of` for PyTensor variables."""
+        raise NotOffered(f"[prior] treatment is not available for family '{self.family}'; give [prior] effect")
 
     @abc.abstractmethod
     def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> Analysis:

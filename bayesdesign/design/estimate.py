@@ -9,6 +9,7 @@ import numpy as np
 from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.errors import Fault, Invalid, check_values
 from bayesdesign.design.base import Accuracy, Design
+from bayesdesign.design.decided import Decides, LogLikelihood, by_normal, tail_intervals
 from bayesdesign.design.normal_line import NormalAnalysis, NormalLine
 from bayesdesign.prior.base import Distribution
 from bayesdesign.prior.point import Point
@@ -23,6 +24,25 @@ class Estimate(Design):
     """
 
     family: ClassVar[str] = "estimate"
+    example: ClassVar[str] = """
+[effect]
+null = 0.0
+favourable = "higher"
+# smallest_relevant = 0.1
+planning_value = 0.4
+# unit = "points"
+
+[design]
+family = "estimate"
+n = 100 # size of the study; the standard error is unit_sd / sqrt(n)
+unit_sd = 1.5 # standard error of the estimate at n = 1: a number or a distribution
+# standard_error = 0.15 # standard error of the estimate, instead of n and unit_sd: a number or a distribution
+# analysis = "z" # the test: "z", which compares the estimate with its standard error
+
+[prior]
+effect = { distribution = "normal", mean = 0.4, sd = 0.3 }
+# probability_null = 0.1
+"""
 
     n: int | None = None
     unit_sd: Distribution | None = None
@@ -69,6 +89,12 @@ class Estimate(Design):
 
     def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> NormalAnalysis:
         return NormalAnalysis(data["estimate"], self._standard_error(n, nuisance), np.inf)
+
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
+    ) -> LogLikelihood:
+        se = self._standard_error(n, nuisance)
+        return by_normal(pm, tail_intervals(decides, null), np.inf, null, se, se)
 
 
 def known_error(se: FloatArray, null: float) -> NormalLine:

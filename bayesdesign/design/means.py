@@ -10,6 +10,7 @@ from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.chi import sd_ratio_nodes
 from bayesdesign.core.errors import check_values
 from bayesdesign.design.base import Accuracy, Design
+from bayesdesign.design.decided import Decides, LogLikelihood, by_normal, tail_intervals
 from bayesdesign.design.estimate import known_error
 from bayesdesign.design.normal_line import NormalAnalysis, NormalLine, critical_value
 from bayesdesign.prior.base import Distribution
@@ -24,6 +25,11 @@ def student_line(
     return NormalLine(
         se=se, estimated_se=se[..., None] * u[:, None, :], df=df[:, None, None], weight=weight, null=null
     )
+
+
+def variance_ratio(pm: Any, name: str, df: float) -> Any:
+    """Ratio of sample to true variance, chi-square(df) / df, as a variable of a model that is to be fitted."""
+    return pm.Gamma(name, alpha=np.float64(df / 2), beta=np.float64(df / 2))
 
 
 def drawn_variance(pm: Any, name: str, sd: Any, df: float, shape: tuple[int, ...]) -> Any:
@@ -68,6 +74,14 @@ class _MeanOfDifferences(Design):
             return NormalAnalysis(data["mean"], nuisance[self.sd_key] / np.sqrt(n), np.inf)
         return NormalAnalysis(data["mean"], np.sqrt(data["variance"] / n), float(n - 1))
 
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
+    ) -> LogLikelihood:
+        se, tails = nuisance[self.sd_key] / np.sqrt(n), tail_intervals(decides, null)
+        if self.analysis == "z":
+            return by_normal(pm, tails, np.inf, null, se, se)
+        return by_normal(pm, tails, n - 1, null, se, se * variance_ratio(pm, "variance_ratio", n - 1) ** 0.5)
+
 
 @final
 @dataclass(frozen=True, kw_only=True)
@@ -78,6 +92,24 @@ class OneMean(_MeanOfDifferences):
     """
 
     family: ClassVar[str] = "one_mean"
+    example: ClassVar[str] = """
+[effect]
+null = 100.0
+favourable = "higher"
+# smallest_relevant = 1.0
+planning_value = 102.0
+unit = "g"
+
+[design]
+family = "one_mean"
+n = 30 # number of values
+sd = 5.0 # standard deviation of the values: a number or a distribution
+# analysis = "t" # the test: "t", or "z" when the sd is known
+
+[prior]
+effect = { distribution = "normal", mean = 102.0, sd = 1.5 }
+# probability_null = 0.1
+"""
     minimum_n: ClassVar[int] = 2
     sd_key: ClassVar[str] = "sd"
 
@@ -110,6 +142,24 @@ class PairedMeans(_MeanOfDifferences):
     """
 
     family: ClassVar[str] = "paired_means"
+    example: ClassVar[str] = """
+[effect]
+null = 0.0
+favourable = "lower"
+# smallest_relevant = 1.0
+planning_value = -2.0
+unit = "mmol/L"
+
+[design]
+family = "paired_means"
+n_pairs = 30 # number of pairs
+sd_difference = 4.0 # standard deviation of the differences within pairs: a number or a distribution
+# analysis = "t" # the test: "t", or "z" when the sd is known
+
+[prior]
+effect = { distribution = "normal", mean = -2.0, sd = 1.5 }
+# probability_null = 0.1
+"""
     minimum_n: ClassVar[int] = 2
     sd_key: ClassVar[str] = "sd_difference"
 

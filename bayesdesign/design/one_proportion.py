@@ -13,6 +13,7 @@ from bayesdesign.core.errors import NotOffered, check_values
 from bayesdesign.core.region import Region
 from bayesdesign.core.search import least_count
 from bayesdesign.design.base import Accuracy, Analysis, Design, Outcomes, Side, Tails
+from bayesdesign.design.decided import Decides, LogLikelihood, log_binomial
 from bayesdesign.prior.base import Distribution
 
 TIE = 1 + 1e-10  # a p-value equal to the level rejects, whatever the last bits say
@@ -28,6 +29,22 @@ class OneProportion(Design):
     """
 
     family: ClassVar[str] = "one_proportion"
+    example: ClassVar[str] = """
+[effect]
+null = 0.2
+favourable = "higher"
+# smallest_relevant = 0.05
+planning_value = 0.4
+
+[design]
+family = "one_proportion"
+n = 40 # number of units that are looked at
+# analysis = "exact" # the test: "exact" (binomial) or "z" (score)
+
+[prior]
+effect = { distribution = "beta", mean = 0.38, size = 25 }
+# probability_null = 0.1
+"""
     saw_tooth: ClassVar[bool] = True
 
     n: int
@@ -43,6 +60,10 @@ class OneProportion(Design):
     @property
     def n_label(self) -> str:
         return "n"
+
+    def tooth(self, n: int) -> int:
+        # the critical count rises by one about every 1 / p sizes; the null is not known here, so a share of n stands for it
+        return max(60, n // 4)
 
     @property
     def default_null(self) -> None:
@@ -71,6 +92,15 @@ class OneProportion(Design):
 
     def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> "BinomialAnalysis":
         return BinomialAnalysis(data["count"], n, self.analysis == "exact")
+
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
+    ) -> LogLikelihood:
+        every = np.arange(n + 1)
+        count = every[decides(self.analyse({"count": every}, nuisance, n))].astype(float)
+        if not count.size:
+            raise NotOffered("this decision never falls, so there is no posterior given it")
+        return lambda effect: pm.math.logsumexp(log_binomial(pm, count, n, effect), keepdims=False)
 
 
 @final

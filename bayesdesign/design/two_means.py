@@ -10,9 +10,10 @@ from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.chi import sd_ratio_nodes
 from bayesdesign.core.errors import Fault, Invalid
 from bayesdesign.design.base import Accuracy, Design
+from bayesdesign.design.decided import Decides, LogLikelihood, by_normal, tail_intervals
 from bayesdesign.design.estimate import known_error
 from bayesdesign.design.groups import check_sizes, group_sizes
-from bayesdesign.design.means import drawn_variance, student_line
+from bayesdesign.design.means import drawn_variance, student_line, variance_ratio
 from bayesdesign.design.normal_line import NormalAnalysis, NormalLine, critical_value
 from bayesdesign.prior.base import Distribution
 from bayesdesign.prior.point import Point
@@ -27,6 +28,28 @@ class TwoMeans(Design):
     """
 
     family: ClassVar[str] = "two_means"
+    example: ClassVar[str] = """
+[effect]
+null = 0.0
+favourable = "higher"
+# smallest_relevant = 1.0
+planning_value = 2.5
+unit = "kg"
+
+[design]
+family = "two_means"
+n_per_group = 60 # number of values in each group
+# n_treatment = 80 # number of treated values, with n_control instead of n_per_group
+# n_control = 40 # number of control values, with n_treatment instead of n_per_group
+sd = 5.0 # standard deviation within both groups: a number or a distribution
+# sd_treatment = 6.0 # standard deviation of treated values, with sd_control instead of sd (analysis "welch" or "z")
+# sd_control = 4.0 # standard deviation of control values, with sd_treatment instead of sd
+# analysis = "t" # the test: "t" (one sd for both groups), "welch" (an sd for each) or "z" (sds known)
+
+[prior]
+effect = { distribution = "normal", mean = 2.5, sd = 1.5 }
+# probability_null = 0.1
+"""
     minimum_n: ClassVar[int] = 2
 
     n_per_group: int | None = None
@@ -118,8 +141,26 @@ class TwoMeans(Design):
         a, b = variances[0] / treated, variances[1] / control
         return NormalAnalysis(estimate, np.sqrt(a + b), _satterthwaite(a, b, treated - 1, control - 1))
 
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
+    ) -> LogLikelihood:
+        treated, control = (float(size) for size in self._sizes(np.asarray(float(n))))
+        tails = tail_intervals(decides, null)
+        a, b = (sd**2 / np.float64(size) for sd, size in zip(self._sds(nuisance), (treated, control), strict=True))
+        se = (a + b) ** 0.5
+        if self.analysis == "z":
+            return by_normal(pm, tails, np.inf, null, se, se)
+        if self.analysis == "t":
+            df = treated + control - 2
+            return by_normal(pm, tails, df, null, se, se * variance_ratio(pm, "variance_ratio", df) ** 0.5)
+        a = a * variance_ratio(pm, "variance_ratio_treatment", treated - 1)
+        b = b * variance_ratio(pm, "variance_ratio_control", control - 1)
+        df_a, df_b = np.float64(treated - 1), np.float64(control - 1)
+        approximate = (_satterthwaite(a, b, df_a, df_b), min(df_a, df_b), df_a + df_b)
+        return by_normal(pm, tails, approximate, null, se, (a + b) ** 0.5)
 
-def _satterthwaite(a: FloatArray, b: FloatArray, df_a: FloatArray | float, df_b: FloatArray | float) -> FloatArray:
+
+def _satterthwaite(a: Any, b: Any, df_a: FloatArray | float, df_b: FloatArray | float) -> Any:
     """Approximate degrees of freedom of a + b, each a variance of a mean (Satterthwaite 1946, Welch 1947)."""
     return (a + b) ** 2 / (a * a / df_a + b * b / df_b)
 

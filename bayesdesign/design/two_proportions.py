@@ -10,10 +10,13 @@ from scipy import special
 from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.core.errors import NotOffered
 from bayesdesign.design.base import Accuracy, Analysis, Design, Side, Tails
+from bayesdesign.design.decided import Decides, LogLikelihood, log_binomial
 from bayesdesign.design.fisher import conditional_bounds
 from bayesdesign.design.groups import check_sizes, group_sizes
 from bayesdesign.design.two_counts import TwoCounts
 from bayesdesign.prior.base import Distribution
+
+MOST_TABLES = 250_000  # for NUTS, which sums over all of them some ten thousand times
 
 type Scale = Literal["difference", "ratio", "odds_ratio"]
 
@@ -29,6 +32,27 @@ class TwoProportions(Design):
     """
 
     family: ClassVar[str] = "two_proportions"
+    example: ClassVar[str] = """
+[effect]
+null = 0.0
+favourable = "higher"
+# smallest_relevant = 0.05
+planning_value = 0.15
+
+[design]
+family = "two_proportions"
+n_per_group = 150 # number of units in each group
+# n_treatment = 200 # number of treated units, with n_control instead of n_per_group
+# n_control = 100 # number of control units, with n_treatment instead of n_per_group
+control = { distribution = "beta", mean = 0.3, size = 100 } # the proportion in the control group: a number or a distribution
+# scale = "difference" # the effect: "difference" of proportions, "ratio" or "odds_ratio" (treatment minus, or over, control)
+# analysis = "z" # the test: "z" (pooled), "exact" (Fisher) or "z_unpooled"
+
+[prior]
+effect = { distribution = "normal", mean = 0.15, sd = 0.06, truncated = [-0.1, 0.4] }
+# treatment = { distribution = "beta", mean = 0.45, size = 40 }
+# probability_null = 0.1
+"""
     saw_tooth: ClassVar[bool] = True
     sizes_at_once: ClassVar[int] = 1
 
@@ -70,6 +94,9 @@ class TwoProportions(Design):
     @property
     def nuisance(self) -> dict[str, Distribution]:
         return {"control": self.control}
+
+    def tooth(self, n: int) -> int:
+        return max(12, n // 40)
 
     def nuisance_bounds(self, name: str) -> tuple[float, float]:
         return 0.0, 1.0
@@ -168,7 +195,8 @@ class TwoProportions(Design):
         self, pm: Any, effect: Any, nuisance: Mapping[str, Any], n: int, shape: tuple[int, ...]
     ) -> dict[str, Any]:
         treated, control = (int(size) for size in self._sizes(np.asarray(float(n))))
-        share = self._symbolic_treatment(effect, nuisance["control"])
+        # control + (treatment - control) can round to just above 1
+        share = pm.math.clip(self._symbolic_treatment(effect, nuisance["control"]), np.float64(0), np.float64(1))
         return {
             "treated_events": pm.Binomial("treated_events", n=treated, p=share, shape=shape),
             "control_events": pm.Binomial("control_events", n=control, p=nuisance["control"], shape=shape),
@@ -182,6 +210,35 @@ class TwoProportions(Design):
     def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> "TwoCountsAnalysis":
         treated, control = (int(size) for size in self._sizes(np.asarray(float(n))))
         return TwoCountsAnalysis(data["treated_events"], data["control_events"], treated, control, self)
+
+    def symbolic_effect(self, treatment: Any, nuisance: Mapping[str, Any]) -> Any:
+        control = nuisance["control"]
+        if self.scale == "difference":
+            return treatment - control
+        return treatment / control if self.scale == "ratio" else treatment * (1 - control) / ((1 - treatment) * control)
+
+    def decision_likelihood(
+        self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
+    ) -> LogLikelihood:
+        treated, control = (int(size) for size in self._sizes(np.asarray(float(n))))
+        if (treated + 1) * (control + 1) > MOST_TABLES:
+            raise NotOffered(f"NUTS sums over every table, up to {MOST_TABLES} of them; use --route integration for groups this large")
+        x, y = (np.arange(size + 1) for size in (treated, control))
+        tables = dict(zip(("treated_events", "control_events"), np.meshgrid(x, y, indexing="ij"), strict=True))
+        flat = {name: counts.ravel() for name, counts in tables.items()}
+        chosen = decides(self.analyse(flat, nuisance, n)).reshape(len(x), len(y)).astype(float)
+        if not chosen.any():
+            raise NotOffered("this decision never falls, so there is no posterior given it")
+        least = np.float64(1e-300)  # keeps the logarithm finite for a row of tables that never leads to the decision
+
+        def log_probability(effect: Any) -> Any:
+            share = self._symbolic_treatment(effect, nuisance["control"])
+            given_x = pm.math.dot(chosen, pm.math.exp(log_binomial(pm, y.astype(float), control, nuisance["control"])))
+            return pm.math.logsumexp(
+                log_binomial(pm, x.astype(float), treated, share) + pm.math.log(given_x + least), keepdims=False
+            )
+
+        return log_probability
 
 
 def _log_share(x: FloatArray, n: float) -> FloatArray:
@@ -228,14 +285,17 @@ class TwoCountsAnalysis(Analysis):
             with np.errstate(divide="ignore", invalid="ignore"):
                 z = np.nan_to_num(gap / np.sqrt(variance), posinf=np.inf, neginf=-np.inf)
             return np.asarray(2 * stats.norm.sf(np.abs(z)) if side == "two" else stats.norm.sf(z if side == "higher" else -z))
-        tables, back = np.unique(np.stack([self.treated, self.control]), axis=1, return_inverse=True)
-        x, y = tables
+        # one number for each table: np.unique over pairs takes twelve times as long
+        key = self.treated.astype(np.int64) * (self.n_control + 1) + self.control.astype(np.int64)
+        seen = np.unique(key)
+        back = np.searchsorted(seen, key)
+        x, y = np.divmod(seen, self.n_control + 1)
         if side == "two" and tails == "minimum_likelihood":
             p = [
                 stats.fisher_exact([[a, self.n_treated - a], [b, self.n_control - b]]).pvalue for a, b in zip(x, y, strict=True)
             ]
-            return np.asarray(p)[back.ravel()]
+            return np.asarray(p)[back]
         law = stats.hypergeom(self.n_treated + self.n_control, self.n_treated, x + y)
         higher, lower = law.sf(x - 1), law.cdf(x)
         both = np.minimum(1.0, 2 * np.minimum(higher, lower))
-        return np.asarray({"higher": higher, "lower": lower, "two": both}[side])[back.ravel()]
+        return np.asarray({"higher": higher, "lower": lower, "two": both}[side])[back]

@@ -14,7 +14,7 @@ from bayesdesign.prior.nodes import nuisance_nodes, variable_nodes
 from bayesdesign.study.study import Study
 
 # Nodes per panel at each refinement: (effect, nuisance, auxiliary). A result is compared with the level before it.
-LEVELS = ((8, 8, 12), (12, 12, 16), (16, 18, 22), (20, 27, 28), (24, 5, 34), (32, 9, 40))
+LEVELS = ((8, 8, 12), (12, 12, 16), (16, 18, 22), (20, 27, 28), (12, 6, 34), (16, 9, 40))
 WEIGHTLESS = 1e-18
 PANELS_FROM = 4  # level from which nuisance parameters are integrated by composite panels
 

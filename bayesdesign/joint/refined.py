@@ -19,6 +19,7 @@ from bayesdesign.study.study import Prior, Study
 
 GOAL = 5e-9  # change from one refinement to the next at which the route stops by default
 COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is enough
+MEMORY = 0.15  # share of the change before that is kept in the error of designs with counts
 ROUNDING = 1e-13  # what accumulates in sums of some hundred terms, relative to the condition's probability
 
 NO_CLAIM = "the rule never claims an effect that is not exactly null"
@@ -51,10 +52,13 @@ def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float
     """Raise the level until no reading changes by more than the goal, or the last level is reached."""
     goal = min(GOAL, tolerance)
     before = cells(integrate(study, n, 0))
+    last: dict[str, Number] = {}
     for level in range(1, len(LEVELS)):
         joint = integrate(study, n, level)
         now = cells(joint)
         numbers = _with_errors(read(now, study), read(before, study))
+        if study.design.saw_tooth:
+            numbers, last = _no_luck(numbers, last), numbers
         cells_error = np.abs(now.by_state - before.by_state)[:, 0] + ROUNDING
         if _all_settled(numbers, cells_error, goal):
             break
@@ -64,6 +68,14 @@ def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float
         if level + 1 < len(LEVELS):
             before = now
     return Refined(numbers=numbers, cells=now.by_state[:, 0], cells_error=cells_error, joint=joint, level=level)
+
+
+def _no_luck(numbers: dict[str, Number], last: dict[str, Number]) -> dict[str, Number]:
+    """With counts the change from level to level is partly chance, so one small change does not count against a large one before."""
+    return {
+        name: replace(number, error=np.fmax(number.error, last[name].error * MEMORY)) if name in last else number
+        for name, number in numbers.items()
+    }
 
 
 def _all_settled(numbers: dict[str, Number], cells_error: FloatArray, goal: float) -> bool:
@@ -118,10 +130,10 @@ def _distributions(study: Study, main: Refined) -> dict[str, Number]:
         why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
         ratio = missing(len(ratio.value), why)
     fine, coarse = set_up(study, main.joint.n, main.level), set_up(study, main.joint.n, main.level - 1)
-    power = power_quantiles(fine, POWER_LEVELS)
-    change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING
     if fine.outcomes.rough_within:  # more nodes cost much and gain little where the probability jumps at every count
         fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
+    power = power_quantiles(fine, POWER_LEVELS)
+    change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING
     median = median_multiple(fine)
     return {
         "exaggeration_ratio": ratio,

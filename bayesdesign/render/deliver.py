@@ -11,7 +11,9 @@ from typing import TextIO
 from bayesdesign.core.errors import Fault, StudyError
 
 # for terminals and pipes whose encoding has no typographic signs
-_PLAIN = str.maketrans({"─": "-", "│": "|", "±": "+-", "·": ".", "×": "x", "–": "-", "…": "...", "≥": ">=", "≤": "<="})
+_PLAIN = str.maketrans(
+    {"─": "-", "│": "|", "±": "+-", "·": ".", "×": "x", "–": "-", "…": "...", "≥": ">=", "≤": "<="}
+)
 
 
 def check_target(out: str, study_file: str = "") -> None:
@@ -43,7 +45,9 @@ def write_file(out: str, text: str) -> None:
             beside.chmod(target.stat().st_mode & 0o777)
         beside.replace(target)
     except OSError as failure:
-        raise _fault(out, f"cannot be written ({failure.strerror or failure})", "choose another place") from failure
+        raise _fault(
+            out, f"cannot be written ({failure.strerror or failure})", "choose another place"
+        ) from failure
     finally:
         beside.unlink(missing_ok=True)
 
@@ -75,7 +79,7 @@ def write_stream(text: str, stream: TextIO | None = None, *, utf8: bool = False)
 
 
 def forget(stream: TextIO) -> None:
-    """Point the stream's descriptor elsewhere, so that the interpreter's last flush does not complain either."""
+    """Point the stream elsewhere, so that the interpreter's last flush does not complain either."""
     with contextlib.suppress(OSError, ValueError):
         os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
 

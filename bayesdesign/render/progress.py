@@ -10,7 +10,7 @@ PATIENCE = 0.7  # seconds of silence before anything is shown
 
 @contextmanager
 def working(what: str, *, shown: bool) -> Iterator[None]:
-    """Show a transient bar on stderr once the work has lasted longer than `PATIENCE`; nothing at all unless `shown`."""
+    """Show a transient bar on stderr once the work outlasts `PATIENCE`; nothing at all unless `shown`."""
     if not shown:
         yield
         return

@@ -6,9 +6,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayesdesign.core.arrays import FloatArray
-from bayesdesign.core.errors import Fault
+from bayesdesign.core.errors import Fault, NotOffered
 from bayesdesign.prior.base import Distribution
 from bayesdesign.prior.nodes import nuisance_nodes
+from bayesdesign.prior.point import Point
 
 if TYPE_CHECKING:
     from bayesdesign.study.study import Study
@@ -71,7 +72,12 @@ def _prior_faults(study: "Study") -> list[Fault]:
     for name, belief in study.design.nuisance.items():
         faults += _support_faults(f"[design] {name}", belief, *study.design.nuisance_bounds(name))
     if not faults:
-        faults += _variable_faults(study)
+        try:
+            faults += _variable_faults(study)
+        except NotOffered:  # no other family knows a treated arm
+            faults.append(
+                Fault(where="[prior] treatment", problem=f"not for family {study.design.family}", allowed="give the prior on [prior] effect")
+            )
     return faults
 
 
@@ -82,6 +88,8 @@ def _support_faults(where: str, belief: Distribution, low: float, high: float) -
     if outside <= TRACE:
         return []
     allowed = f"values strictly between {low:g} and {high:g}" if math.isfinite(high) else f"values above {low:g}"
+    if isinstance(belief, Point):
+        return [Fault(where=where, problem="not a possible value", got=f"{belief.value:g}", allowed=allowed)]
     return [
         Fault(where=where, problem=f"{outside:.2g} of its probability lies on impossible values", got=belief.describe(),
               allowed=f"{allowed}; choose another distribution, or add truncated = [low, high]")
@@ -109,6 +117,8 @@ def _variable_faults(study: "Study") -> list[Fault]:
     if lost <= TRACE or (prior.variable.kind in ("truncated", "point") and lost < 0.5):
         return []
     example = f"{low[0]:.4g} to {high[0]:.4g}" + (" (it depends on the nuisance parameters)" if len(weight) > 1 else "")
+    if isinstance(prior.variable, Point):
+        return [Fault(where=where, problem="not a possible value", got=f"{prior.variable.value:g}", allowed=f"possible values are {example}")]
     return [
         Fault(where=where, problem=f"{lost:.2g} of its probability lies on impossible values", got=prior.variable.describe(),
               allowed=f"possible values are {example}; choose another distribution, or add truncated = [low, high]")
@@ -122,6 +132,11 @@ def _target_faults(study: "Study") -> list[Fault]:
     faults = []
     if (target.at_least is None) == (target.at_most is None):
         faults.append(Fault(where="[target] at_least", problem="sizes need one bound", allowed="give at_least or at_most, one of them"))
+    bounds = {"at_least": target.at_least, "at_most": target.at_most}
+    for key, bound in bounds.items():
+        if bound is not None and not 0 <= bound <= (math.inf if target.measure.startswith("exaggeration") else 1):
+            allowed = "a number above 0" if target.measure.startswith("exaggeration") else "a probability, 0 to 1 (0.8, not 80)"
+            faults.append(Fault(where=f"[target] {key}", problem="not a possible value", got=f"{bound:g}", allowed=allowed))
     if target.max_n < study.design.minimum_n:
         faults.append(
             Fault(where="[target] max_n", problem="too small", got=str(target.max_n), allowed=f"at least {study.design.minimum_n}")
