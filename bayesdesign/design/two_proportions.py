@@ -49,7 +49,7 @@ control = { distribution = "beta", mean = 0.3, size = 100 } # the proportion in 
 # analysis = "z" # the test: "z" (pooled), "exact" (Fisher) or "z_unpooled"
 
 [prior]
-effect = { distribution = "normal", mean = 0.15, sd = 0.06, truncated = [-0.1, 0.4] }
+effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
 # treatment = { distribution = "beta", mean = 0.45, size = 40 }
 # probability_null = 0.1
 """

@@ -122,7 +122,7 @@ def check_convergence(chains: dict[str, FloatArray], divergences: int) -> Diagno
 
     r_hat = max(float(az.rhat(x)) for x in chains.values())
     bulk = min(float(az.ess(x, method="bulk")) for x in chains.values())
-    tail = min(float(az.ess(x, method="tail")) for x in chains.values())
+    tail = min(float(az.ess(x, method="tail", prob=(0.05, 0.95))) for x in chains.values())
     advice = "try another --seed, a prior with lighter tails, or --route integration"
     if not r_hat <= R_HAT:
         raise Refused(f"NUTS: the chains disagree, R-hat {r_hat:.3f} exceeds {R_HAT}", advice)

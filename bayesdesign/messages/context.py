@@ -4,7 +4,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
-from typing import final
+from typing import Any, final
 
 import numpy as np
 
@@ -135,10 +135,9 @@ class Context:
 
     def with_nuisance(self, name: str, value: float) -> Study | None:
         """The study with one nuisance parameter fixed elsewhere; None if that is impossible."""
+        design: Any = self.study.design  # every design is a dataclass, which its base class cannot say
         try:
-            return replace(
-                self.study, design=replace(self.study.design, **{name: Point(value=value)}), target=None
-            )  # type: ignore[type-var]
+            return replace(self.study, design=replace(design, **{name: Point(value=value)}), target=None)
         except (BayesdesignError, Invalid, TypeError):
             return None
 

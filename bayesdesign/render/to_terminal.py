@@ -252,6 +252,8 @@ def _size(page: Page, result: "Result") -> None:
         facts += [("reached", figures(size.achieved))] if size.achieved is not None else []
         facts += [("ceiling", figures(size.ceiling))] if size.ceiling is not None else []
         page.line("   ".join(f"{name} {value}" for name, value in facts), "faint")
+    elif result.answers:
+        page.paragraph(f"Below is the study at its planned {words.label(result.study.design.n_label)}.")
     page.gap()
 
 

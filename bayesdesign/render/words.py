@@ -57,10 +57,10 @@ QUANTITIES = {
 SEVERITY = {"block": "stop", "warning": "warning", "info": "note"}
 
 CAUTION = {
-    "clinical": "Clinical study: these numbers prepare a decision and do not make one. Licensed practice and local "
-    "rules come first; have a qualified statistician check the study before anyone is treated by it.",
-    "safety": "Safety matter: these numbers prepare a decision and do not make one. Licensed practice and local "
-    "codes come first; have a qualified statistician check the study before anyone relies on it.",
+    "clinical": "Clinical study: these numbers prepare a decision and do not make one. Licensed practice and "
+    "local rules come first; have a qualified statistician check the study before anyone is treated by it.",
+    "safety": "Safety matter: these numbers prepare a decision and do not make one. Licensed practice and "
+    "local codes come first; have a qualified statistician check the study before anyone relies on it.",
 }
 
 
@@ -226,7 +226,8 @@ def silence(study: "Study", answer: "Answer") -> str:
         distance = natural(study.effect.smallest_relevant, study)
         origin = "" if study.design.ratio_scale else f" from {study.null:.4g}"
         kind = f"is nevertheless relevant ({distance}{origin}, or more)"
-    moral = "Silence leaves that open." if chance_hidden > RARE * sum(chance) else "After silence that is unlikely."
+    rare = chance_hidden <= RARE * sum(chance)
+    moral = "After silence that is unlikely." if rare else "Silence leaves that open."
     return f"{text}; in {count(hidden, chance_hidden)} of those the effect {kind}. {moral}"
 
 

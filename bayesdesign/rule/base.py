@@ -6,6 +6,7 @@ from typing import ClassVar
 import numpy as np
 
 from bayesdesign.core.arrays import FloatArray, IntArray
+from bayesdesign.core.errors import NotOffered
 from bayesdesign.core.region import Region
 from bayesdesign.design.base import Analysis, Outcomes
 from bayesdesign.truth import Favourable
@@ -46,6 +47,11 @@ class Rule(abc.ABC):
     @abc.abstractmethod
     def regions(self, outcomes: Outcomes, null: float) -> list[Region]:
         """Regions of all decisions but the last, disjoint and in order."""
+
+    def regions_at(self, outcomes: Outcomes, null: float, level: float) -> list[Region]:
+        """The regions that `level` would give: outcomes with a p-value of at most that."""
+        del outcomes, null, level
+        raise NotOffered(f"rule '{self.kind}' decides by no p-value; give --decision or --estimate with --se")
 
     @abc.abstractmethod
     def limit(self, distance: FloatArray) -> FloatArray:

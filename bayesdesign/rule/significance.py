@@ -1,6 +1,6 @@
 """Rule `significance`: a one- or two-sided test at level alpha."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import ClassVar, Literal, final
 
 import numpy as np
@@ -55,6 +55,9 @@ class Significance(Rule):
         if self.sides == "two":
             return list(outcomes.two_sided_test(null, self.alpha, self.tails))
         return [outcomes.test(null, self.alpha, self.sides)]
+
+    def regions_at(self, outcomes: Outcomes, null: float, level: float) -> list[Region]:
+        return replace(self, alpha=level).regions(outcomes, null)
 
     def limit(self, distance: FloatArray) -> FloatArray:
         # a consistent test rejects every effect on its side; at the null it keeps its level

@@ -11,11 +11,11 @@ from bayesdesign.prior.point import Point
 from bayesdesign.study.study import Study
 
 LEVELS = (0.05, 0.5, 0.95)
-GRID = 2000  # equally likely points of the prior on one arm; quantiles of the effect are then good to three digits
+GRID = 2000  # equally likely points of the prior on one arm; quantiles of the effect get three digits right
 
 
 def describe(study: Study) -> list[str]:
-    """Sentences in the order of the study file's sections, each to be read alone and wrapped by the caller."""
+    """Sentences in the order of the study file's sections; each can stand alone, and the caller wraps it."""
     return [
         *([f"Question: {study.question}"] if study.question else []),
         *_effect(study),
@@ -51,24 +51,38 @@ def _effect(study: Study) -> list[str]:
     said = [f"What is asked: {words}, against {_natural(null, study)}. {good}"]
     if effect.smallest_relevant is not None:
         low, high = _relevant(study)
-        said.append(f"It is relevant from {_natural(high, study)} upwards or {_natural(low, study)} downwards.")
+        said.append(
+            f"It is relevant from {_natural(high, study)} upwards or {_natural(low, study)} downwards."
+        )
     if effect.planning_value is not None:
-        said.append(f"The one guess for a classical power calculation is {_natural(effect.planning_value, study)}.")
+        said.append(
+            f"The one guess for a classical power calculation is {_natural(effect.planning_value, study)}."
+        )
     return said
 
 
 def _relevant(study: Study) -> tuple[float, float]:
     """The effects from which on a deviation from the null is relevant."""
     least = study.effect.smallest_relevant or 0.0
-    return (study.null / least, study.null * least) if study.design.ratio_scale else (study.null - least, study.null + least)
+    return (
+        (study.null / least, study.null * least)
+        if study.design.ratio_scale
+        else (study.null - least, study.null + least)
+    )
 
 
 def _design(study: Study) -> list[str]:
     design = study.design
     n = design.planned_n
-    sizes = ", ".join(f"{_label(key)} {size}" for key, size in design.group_sizes(n).items()) if n is not None else ""
+    sizes = (
+        ", ".join(f"{_label(key)} {size}" for key, size in design.group_sizes(n).items())
+        if n is not None
+        else ""
+    )
     analysis = getattr(design, "analysis", "")
-    said = [f"Design {_label(design.family)}{f', {sizes}' if sizes else ''}{f', analysis {_label(analysis)}' if analysis else ''}."]
+    said = [
+        f"Design {_label(design.family)}{f', {sizes}' if sizes else ''}{f', analysis {_label(analysis)}' if analysis else ''}."
+    ]
     for name, belief in design.nuisance.items():
         if isinstance(belief, Point):
             said.append(f"The {_label(name)} is taken as known: {_figure(belief.value)}.")
@@ -95,11 +109,17 @@ def _prior(study: Study) -> list[str]:
     variable = prior.variable
     arm = prior.treatment is not None
     opening = f"Before the study, the {'treated arm' if arm else 'effect'}{given} is believed to be: {variable.describe()}"
-    said = [f"{opening}." if isinstance(variable, Point) else f"{opening}; {_quantiles(variable, '' if arm else unit)}."]
+    said = [
+        f"{opening}."
+        if isinstance(variable, Point)
+        else f"{opening}; {_quantiles(variable, '' if arm else unit)}."
+    ]
     if arm:
         said.append(f"With the control arm, this makes the effect {_spread(*_implied(study), unit)}.")
     if weight > 0:
-        said.append(f"The prior weight on an effect of exactly {_natural(study.null, study)} is {_figure(weight)}.")
+        said.append(
+            f"The prior weight on an effect of exactly {_natural(study.null, study)} is {_figure(weight)}."
+        )
     else:
         said.append(f"The prior puts no weight on an effect of exactly {_natural(study.null, study)}.")
     return said
@@ -125,7 +145,11 @@ def _rule(study: Study) -> list[str]:
     rule = study.rule
     good = [_label(name) for name in rule.favourable(study.favourable)]
     decisions = ", ".join(_label(name) for name in rule.decisions)
-    favourable = f"the favourable: {' or '.join(good)}" if good else "none of them is favourable, so this study cannot succeed"
+    favourable = (
+        f"the favourable: {' or '.join(good)}"
+        if good
+        else "none of them is favourable, so this study cannot succeed"
+    )
     states = ", ".join(_label(name) for name in study.states.names)
     return [
         f"The rule is {rule_words(study)}. Its decisions: {decisions}; {favourable}.",
@@ -141,7 +165,13 @@ def rule_words(study: Study) -> str:
         value = getattr(rule, field.name)
         if value is None or (value == field.default and isinstance(value, str) and field.name == "tails"):
             continue
-        text = value.describe() if isinstance(value, Distribution) else f"{value:g}" if isinstance(value, float) else _label(str(value))
+        text = (
+            value.describe()
+            if isinstance(value, Distribution)
+            else f"{value:g}"
+            if isinstance(value, float)
+            else _label(str(value))
+        )
         settings.append(f"{_label(field.name)} {text}")
     return ", ".join([_label(rule.kind), *settings])
 
@@ -150,7 +180,9 @@ def _target(study: Study) -> list[str]:
     target = study.target
     if target is None:
         return []
-    side, bound = ("at least", target.at_least) if target.at_least is not None else ("at most", target.at_most)
+    side, bound = (
+        ("at least", target.at_least) if target.at_least is not None else ("at most", target.at_most)
+    )
     said = f"The target: {_label(target.measure)} of {side} {_figure(bound if bound is not None else np.nan)}"
     label = _label(study.design.n_label)
     return [f"{said}, with {label} up to {target.max_n}."]

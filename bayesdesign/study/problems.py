@@ -27,7 +27,7 @@ PLAIN = {
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Problem:
-    """One error of the validator: its type, the path within the section, the value found there, and its details."""
+    """One error of the validator: its type, path within the section, the value found there, and details."""
 
     kind: str
     path: tuple[int | str, ...]
@@ -57,18 +57,36 @@ def faults_of(section: str, problem: Problem, words: Mapping[str, str]) -> list[
         case "literal_error" | "enum":
             return [_not_a_choice(where, problem, got)]
         case "less_than_equal" | "greater_than_equal":
-            side, bound = ("most", problem.more.get("le")) if problem.kind[0] == "l" else ("least", problem.more.get("ge"))
-            return [Fault(where=where, problem="value not allowed", got=got, allowed=f"a whole number of at {side} {bound}")]
+            side, bound = (
+                ("most", problem.more.get("le"))
+                if problem.kind[0] == "l"
+                else ("least", problem.more.get("ge"))
+            )
+            return [
+                Fault(
+                    where=where,
+                    problem="value not allowed",
+                    got=got,
+                    allowed=f"a whole number of at {side} {bound}",
+                )
+            ]
         case "too_short" | "too_long":
             length = problem.more.get("min_length", problem.more.get("max_length"))
-            return [Fault(where=where, problem=problem.kind.replace("_", " "), got=got, allowed=f"a list of {length}")]
+            return [
+                Fault(
+                    where=where,
+                    problem=problem.kind.replace("_", " "),
+                    got=got,
+                    allowed=f"a list of {length}",
+                )
+            ]
     what, allowed = PLAIN.get(problem.kind, ("value not allowed", words.get(last, "")))
     hint = ", without quotes" if isinstance(problem.got, str) and "number" in allowed else ""
     return [Fault(where=where, problem=what, got=got, allowed=allowed + hint)]
 
 
 def place(section: str, path: Iterable[int | str], *, keep_last: bool = False) -> str:
-    """`[section] key.key[i].key`, without the names of branches; `keep_last` spares the last part, whatever it looks like."""
+    """`[section] key.key[i].key`, without the names of branches; `keep_last` spares the last part as it is."""
     parts = list(path)
     text = ""
     for i, part in enumerate(parts):
@@ -82,19 +100,34 @@ def place(section: str, path: Iterable[int | str], *, keep_last: bool = False) -
 def unknown(where: str, what: str, name: str, known: Iterable[str], got: str = "") -> Fault:
     """A key, section or tag that does not exist, with the one that was probably meant and all there are."""
     known = list(known)
-    return Fault(where=where, problem=f"unknown {what}", got=got, allowed=f"{nearest(name, known)}allowed: {', '.join(known)}")
+    return Fault(
+        where=where,
+        problem=f"unknown {what}",
+        got=got,
+        allowed=f"{nearest(name, known)}allowed: {', '.join(known)}",
+    )
 
 
 def _of_object(where: str, table: Any, fault: Fault) -> Fault:
     """A fault that an object raised about one of its own keys."""
     if not isinstance(table, dict):  # a bare number: the object's only key is not in the file
         return replace(fault, where=where, got=shown(table))
-    inner = where if not fault.where else f"{where} {fault.where}" if " " not in where else f"{where}.{fault.where}"
+    inner = (
+        where
+        if not fault.where
+        else f"{where} {fault.where}"
+        if " " not in where
+        else f"{where}.{fault.where}"
+    )
     name = fault.where.partition(".")[0]
     if name in table:
         return replace(fault, where=inner, got=shown(table[name]))
-    problem = "missing" if fault.got in ("None", "") and fault.problem == "value not allowed" else fault.problem
-    return replace(fault, where=inner, problem=problem, got="" if fault.got == "None" else cut(escaped(fault.got)))
+    problem = (
+        "missing" if fault.got in ("None", "") and fault.problem == "value not allowed" else fault.problem
+    )
+    return replace(
+        fault, where=inner, problem=problem, got="" if fault.got == "None" else cut(escaped(fault.got))
+    )
 
 
 def _not_a_belief(where: str, value: Any) -> Fault:
@@ -105,11 +138,22 @@ def _not_a_belief(where: str, value: Any) -> Fault:
                      allowed=f'a number{hint}, or a table like {{distribution = "normal", mean = 0, sd = 1}}')  # fmt: skip
     if "distribution" not in value:
         return Fault(where=f"{where}.distribution", problem="missing", allowed=f"one of: {', '.join(kinds)}")
-    return unknown(f"{where}.distribution", "distribution", str(value["distribution"]), kinds, shown(value["distribution"]))
+    return unknown(
+        f"{where}.distribution",
+        "distribution",
+        str(value["distribution"]),
+        kinds,
+        shown(value["distribution"]),
+    )
 
 
 def _not_a_choice(where: str, problem: Problem, got: str) -> Fault:
     # pydantic words the choices as 'a', 'b' or 'c'
     choices = str(problem.more.get("expected", "")).replace(" or ", ", ").replace("'", "").split(", ")
     quoted = ", ".join(f'"{choice}"' for choice in choices)
-    return Fault(where=where, problem="not one of the choices", got=got, allowed=f"{nearest(problem.got, choices)}allowed: {quoted}")
+    return Fault(
+        where=where,
+        problem="not one of the choices",
+        got=got,
+        allowed=f"{nearest(problem.got, choices)}allowed: {quoted}",
+    )

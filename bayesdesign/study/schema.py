@@ -1,18 +1,39 @@
-"""The study file as pydantic models, made from the dataclasses of families, rules and distributions themselves.
+"""The study file as pydantic models, made from the dataclasses of families, rules and distributions.
 
-The only file that imports pydantic. A family, rule or distribution that joins its table (`FAMILIES`, `RULES`, `DISTRIBUTIONS`)
-is read, checked and in the JSON Schema without a line here. Models are built when first needed, and only those that a file
-uses: all of them together would take longer than the rest of loading.
+The only file that imports pydantic. A family, rule or distribution that joins its table (`FAMILIES`, `RULES`,
+`DISTRIBUTIONS`) is read, checked and in the JSON Schema without a line here. Models are built when first
+needed, and only those that a file uses: all of them together would take longer than the rest of loading.
 """
 
 import dataclasses
 import functools
 import types
 from collections.abc import Iterator
-from typing import Annotated, Any, ClassVar, ForwardRef, Literal, TypeAliasType, Union, cast, get_args, get_origin, get_type_hints
+from typing import (
+    Annotated,
+    Any,
+    ClassVar,
+    ForwardRef,
+    Literal,
+    TypeAliasType,
+    Union,
+    cast,
+    get_args,
+    get_origin,
+    get_type_hints,
+)
 
 import numpy as np
-from pydantic import AfterValidator, BaseModel, ConfigDict, Discriminator, Field, Tag, ValidationError, create_model
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    ConfigDict,
+    Discriminator,
+    Field,
+    Tag,
+    ValidationError,
+    create_model,
+)
 from pydantic.json_schema import GenerateJsonSchema
 from pydantic_core import PydanticCustomError
 
@@ -29,7 +50,9 @@ LARGEST_WHOLE = 1_000_000_000  # the products of larger counts leave the 64-bit 
 type Keys = dict[str, tuple[Any, Any]]  # name: (annotation, pydantic's Field)
 
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-End = Annotated[float, Field(strict=True)]  # of a truncated range: one may be infinite, and Truncated refuses NaN
+End = Annotated[
+    float, Field(strict=True)
+]  # of a truncated range: one may be infinite, and Truncated refuses NaN
 Whole = Annotated[int, Field(strict=True, ge=-LARGEST_WHOLE, le=LARGEST_WHOLE)]
 Text = Annotated[str, Field(strict=True)]
 SCALARS = {float: Number, int: Whole, str: Text, bool: Annotated[bool, Field(strict=True)]}
@@ -83,10 +106,14 @@ def check(section: str, tag: str, table: dict[str, Any]) -> tuple[Any, list[Faul
         return model.model_validate(table).build(), []
     except ValidationError as bad:
         found = bad.errors(include_url=False)
-        problems = [Problem(kind=e["type"], path=e["loc"], got=e["input"], more=e.get("ctx", {})) for e in found]
+        problems = [
+            Problem(kind=e["type"], path=e["loc"], got=e["input"], more=e.get("ctx", {})) for e in found
+        ]
     except Invalid as bad:
         problems = [Problem(kind="invalid", path=(), got=table, more={"faults": bad.faults})]
-    return None, [fault for problem in problems for fault in faults_of(section, problem, _words_at(model, problem.path))]
+    return None, [
+        fault for problem in problems for fault in faults_of(section, problem, _words_at(model, problem.path))
+    ]
 
 
 def takes_control(family: str) -> bool:
@@ -101,14 +128,22 @@ def json_schema() -> dict[str, Any]:
     """
     every = frozenset(DISTRIBUTION_OF)
     choices: dict[str, Any] = {
-        "design": Annotated[Union[tuple(section_model("design", tag, every) for tag in FAMILY_OF)], Field(discriminator="family")],  # noqa: UP007
+        "design": Annotated[
+            Union[tuple(section_model("design", tag, every) for tag in FAMILY_OF)],
+            Field(discriminator="family"),
+        ],  # noqa: UP007
         "rule": Union[tuple(section_model("rule", tag, every) for tag in RULE_OF)],  # noqa: UP007 (`type` may be absent)
     }
     keys: Keys = {
-        name: (choices.get(name) or section_model(name, "", every), _key(words, dataclasses.MISSING if name in REQUIRED else None))
+        name: (
+            choices.get(name) or section_model(name, "", every),
+            _key(words, dataclasses.MISSING if name in REQUIRED else None),
+        )
         for name, words in SECTIONS.items()
     }
-    schema = _model("study file", "A study: question, belief, design and rule.", keys).model_json_schema(schema_generator=_Untitled)
+    schema = _model("study file", "A study: question, belief, design and rule.", keys).model_json_schema(
+        schema_generator=_Untitled
+    )
     for family in filter(takes_control, FAMILY_OF):  # [prior] may hold it instead
         schema["$defs"][f"design_{family}"]["required"].remove(CONTROL)
     return {"$schema": GenerateJsonSchema.schema_dialect, **schema}
@@ -132,9 +167,21 @@ def section_model(section: str, tag: str, kinds: frozenset[str]) -> type[Table]:
         case "rule":
             return _table(RULE_OF[tag], section, {"type": _tag_key(section, "type", tag)}, belief, tag)
         case "target":
-            return _table(Target, section, {"measure": (Literal[_measures()], _key(words_of(Target, section)["measure"], Target.measure))}, belief)
+            return _table(
+                Target,
+                section,
+                {
+                    "measure": (
+                        Literal[_measures()],
+                        _key(words_of(Target, section)["measure"], Target.measure),
+                    )
+                },
+                belief,
+            )
         case "prior":
-            return _table(Prior, section, {CONTROL: (belief, _key(words_of(Prior, section)[CONTROL], None))}, belief)
+            return _table(
+                Prior, section, {CONTROL: (belief, _key(words_of(Prior, section)[CONTROL], None))}, belief
+            )
         case _:
             return _table({"study": Heading, "effect": Effect}[section], section, {}, belief)
 
@@ -147,11 +194,13 @@ def _measures() -> tuple[str, ...]:
 
 
 def _tag_key(section: str, key: str, tag: str) -> tuple[Any, Any]:
-    return Literal[tag], _key(words_of(Heading, section).get(key, ""), tag if tag == DEFAULT_RULE else dataclasses.MISSING)
+    return Literal[tag], _key(
+        words_of(Heading, section).get(key, ""), tag if tag == DEFAULT_RULE else dataclasses.MISSING
+    )
 
 
 def _key(words: str, default: Any) -> Any:
-    """A key with its description. Without a default it is required; the defaults None and "" mean that it may be absent."""
+    """A key with its description. Without a default it is required; None and "" mean that it may be absent."""
     about = words or None
     if default is dataclasses.MISSING:
         return Field(description=about)
@@ -161,7 +210,9 @@ def _key(words: str, default: Any) -> Any:
 
 
 def _model(name: str, about: str, keys: Keys) -> type[Table]:
-    return cast("type[Table]", create_model(name, __base__=Table, __doc__=about, **cast("dict[str, Any]", keys)))
+    return cast(
+        "type[Table]", create_model(name, __base__=Table, __doc__=about, **cast("dict[str, Any]", keys))
+    )
 
 
 def _table(cls: Any, section: str, more: Keys, belief: Any, tag: str = "") -> type[Table]:
@@ -170,7 +221,10 @@ def _table(cls: Any, section: str, more: Keys, belief: Any, tag: str = "") -> ty
     keys = dict(more)
     for field in dataclasses.fields(cls):
         if field.name not in keys:
-            keys[field.name] = (_in_file(hints[field.name], belief), _key(words.get(field.name, ""), field.default))
+            keys[field.name] = (
+                _in_file(hints[field.name], belief),
+                _key(words.get(field.name, ""), field.default),
+            )
     model = _model(f"{section}_{tag}" if tag else section, first_paragraph(cls), keys)
     model.source = cls
     return model
@@ -190,10 +244,16 @@ def _in_file(annotation: Any, belief: Any) -> Any:
         parts = [_in_file(part, belief) for part in get_args(annotation) if part is not type(None)]
         if Distribution in get_args(annotation) and len(parts) == 2:  # or one of some words
             tagged = Annotated[parts[0], Tag(f"{TAG}belief")], Annotated[parts[1], Tag(f"{TAG}word")]
-            return Annotated[Union[tagged], Discriminator(lambda value: f"{TAG}{'word' if isinstance(value, str) else 'belief'}")]  # noqa: UP007
+            return Annotated[
+                Union[tagged],
+                Discriminator(lambda value: f"{TAG}{'word' if isinstance(value, str) else 'belief'}"),
+            ]  # noqa: UP007
         return Union[tuple(parts)]  # noqa: UP007
     if dataclasses.is_dataclass(annotation):
-        return Annotated[_table(annotation, annotation.__name__, {}, belief), AfterValidator(_build)]  # type: ignore[attr-defined]
+        return Annotated[
+            _table(annotation, str(getattr(annotation, "__name__", "table")), {}, belief),
+            AfterValidator(_build),
+        ]
     return annotation
 
 
@@ -203,7 +263,8 @@ def _belief(kinds: frozenset[str]) -> Any:
     tables = {kind: _distribution(kind) for kind in sorted(kinds)}
     tagged = [Annotated[table, AfterValidator(_build), Tag(TAG + kind)] for kind, table in tables.items()]
     number = Annotated[Number, AfterValidator(lambda value: Point(value=value)), Tag(f"{TAG}number")]
-    whole = Annotated[Union[(number, *tagged)], Discriminator(_tag_of)]  # noqa: UP007
+    members = (number, *tagged)
+    whole = Annotated[Union[members], Discriminator(_tag_of)]  # noqa: UP007
     for table in tables.values():  # a mixture holds what it is one of
         table.model_rebuild(_types_namespace={"Belief": whole})
     return whole
@@ -217,8 +278,8 @@ def _distribution(kind: str) -> type[Table]:
     if cls is Point:
         return model
     window = Annotated[list[End], Field(min_length=2, max_length=2)]
-    truncatable = create_model(model.__name__, __base__=model, __doc__=model.__doc__, truncated=(window, _key(words["truncated"], None)))
-    return cast("type[Table]", truncatable)
+    cut = (window, _key(words["truncated"], None))
+    return create_model(model.__name__, __base__=model, __doc__=model.__doc__, truncated=cut)
 
 
 def _tag_of(value: Any) -> str | None:
@@ -229,7 +290,7 @@ def _tag_of(value: Any) -> str | None:
 
 
 def _build(table: Table) -> Any:
-    """The dataclass of an inner table; its faults travel inside pydantic's error, so that no others are lost."""
+    """The dataclass of an inner table; its faults travel inside pydantic's error, and no others are lost."""
     try:
         return table.build()
     except Invalid as bad:

@@ -1,4 +1,7 @@
-"""How a value from a stranger's file is shown on one line: in TOML's own way, short, and with nothing a terminal would obey."""
+"""How a value from a stranger's file is shown on one line.
+
+In TOML's own way, short, and with nothing that a terminal would obey.
+"""
 
 import datetime as dt
 import difflib
@@ -55,7 +58,8 @@ def _pieces(value: object, depth: int) -> Iterator[str]:
             yield ELLIPSIS
         case dict():
             entries = (
-                f"{shown_key(key)} = {''.join(_pieces(inner, depth + 1))}" for key, inner in list(value.items())[:LONGEST]
+                f"{shown_key(key)} = {''.join(_pieces(inner, depth + 1))}"
+                for key, inner in list(value.items())[:LONGEST]
             )
             yield "{" + ", ".join(entries) + "}"
         case list() | tuple():

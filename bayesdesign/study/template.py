@@ -1,6 +1,6 @@
 """`new`: a commented starting file for a family.
 
-The family says in its `example` what is its own; the rest, and the words above each key, are the same for all.
+The family says in its `example` what is its own; the rest is the same for all.
 """
 
 import re
@@ -56,7 +56,11 @@ def template(family: str) -> str:
             section = line.strip("[]")
             lines += ["", f"# {SECTIONS[section]}", line]
         elif found := re.match(r"(?P<option># )?(?P<key>\w+) = ", line):
-            words = keys[found["key"]] if section == "design" and found["key"] in keys else KEYS[section][found["key"]]
+            words = (
+                keys[found["key"]]
+                if section == "design" and found["key"] in keys
+                else KEYS[section][found["key"]]
+            )
             lines += _key(line.removeprefix("# "), words, optional=found["option"] is not None)
     return "\n".join(lines) + "\n"
 
@@ -64,4 +68,8 @@ def template(family: str) -> str:
 def _key(line: str, words: str, *, optional: bool) -> list[str]:
     """The words as comment lines, then the key."""
     entry = re.sub(r"\s# .*$", "", line)
-    return ["", *textwrap.wrap(words, WIDTH, initial_indent="# ", subsequent_indent="# "), f"#{entry}" if optional else entry]
+    return [
+        "",
+        *textwrap.wrap(words, WIDTH, initial_indent="# ", subsequent_indent="# "),
+        f"#{entry}" if optional else entry,
+    ]

@@ -1,7 +1,7 @@
 """What each key of a study file means, in words: for the JSON Schema, for templates and for faults.
 
-Sections and rules are worded here. The keys of a family are worded in its own `example`, and those of a distribution in its
-docstring, so that a new family or distribution brings its words along.
+Sections and rules are worded here. The keys of a family are worded in its own `example`, and those of a
+distribution in its docstring, so that a new family or distribution brings its words along.
 """
 
 import inspect
@@ -27,7 +27,7 @@ KEYS = {
     "effect": {
         "null": "the value to compare with; 0, or 1 for ratios, unless the family needs another",
         "favourable": 'which direction is good news: "higher", "lower" or "either"',
-        "smallest_relevant": "the least distance from the null that matters, > 0 (a ratio above 1 on ratio scales)",
+        "smallest_relevant": "the least distance from the null that matters, > 0 (on ratio scales a ratio > 1)",
         "planning_value": "the one effect a classical power calculation would use",
         "unit": "the unit of the effect, in words",
     },
@@ -40,7 +40,7 @@ KEYS = {
     "rule": {
         "alpha": "level of the test, between 0 and 1; a two-sided test has half of it in each tail",
         "sides": 'the side on which the test may reject: "two", "higher" or "lower"',
-        "tails": 'two-sided p-value of exact tests: "central" (twice the smaller tail) or "minimum_likelihood"',
+        "tails": 'two-sided p of exact tests: "central" (twice the smaller tail) or "minimum_likelihood"',
         "type": "the rule",
     },
     "target": {
@@ -52,7 +52,7 @@ KEYS = {
     "design": {"family": "what kind of study it is"},
     "distribution": {
         "distribution": "the shape of the belief",
-        "truncated": "[low, high]: the belief is cut off outside and scaled up inside; one end may be infinite",
+        "truncated": "[low, high]: cut off outside, scaled up inside; one end may be infinite",
     },
 }
 
@@ -63,7 +63,7 @@ def first_paragraph(cls: type) -> str:
 
 
 def words_of(cls: Any, section: str) -> dict[str, str]:
-    """Description of each key of a family, rule, distribution or section dataclass; keys without words are left out."""
+    """Description of the keys of a family, rule, distribution or section, as far as there is one."""
     return {**docstring_words(cls), **example_words(getattr(cls, "example", "")), **KEYS.get(section, {})}
 
 
@@ -82,4 +82,6 @@ def docstring_words(cls: Any) -> dict[str, str]:
 def example_words(example: str) -> dict[str, str]:
     """Comments of the `[design]` keys in a family's example."""
     design = example.partition("[design]")[2].partition("\n[")[0]
-    return {key: words.strip() for key, words in re.findall(r"^(?:# )?(\w+) = .*?\s# (.+)$", design, re.MULTILINE)}
+    return {
+        key: words.strip() for key, words in re.findall(r"^(?:# )?(\w+) = .*?\s# (.+)$", design, re.MULTILINE)
+    }
