@@ -117,14 +117,18 @@ def _quantiles(
     order = np.argsort(effect, kind="stable")
     at, below = effect[order], np.cumsum(weight[order])
     k = np.clip(np.searchsorted(below, ranks), 0, len(at) - 1)
-    low, high = at[np.maximum(k - 2, 0)].copy(), at[np.minimum(k + 2, len(at) - 1)].copy()
-
     def excess(points: FloatArray) -> FloatArray:
         nodes, weights = weigh(tuple(points))
         slack = 1e-14 * np.maximum(1.0, np.abs(points))
         return np.array([weights[nodes <= p + s].sum() for p, s in zip(points, slack, strict=True)]) - ranks
 
-    at_low, at_high, last = excess(low), excess(high), np.zeros(3)
+    reach, last = 4, np.zeros(3)
+    while True:
+        low, high = at[np.maximum(k - reach, 0)], at[np.minimum(k + reach, len(at) - 1)]
+        at_low, at_high = excess(low), excess(high)
+        if reach >= len(at) or ((at_low <= 0).all() and (at_high >= 0).all()):
+            break
+        reach *= 4
     close = 1e-12 * max(1e-300, float(np.max(np.abs(high))), float(np.ptp(at)) * 1e-3)
     for step in range(120):
         gap = at_high - at_low

@@ -80,9 +80,8 @@ def _design(study: Study) -> list[str]:
         else ""
     )
     analysis = getattr(design, "analysis", "")
-    said = [
-        f"Design {_label(design.family)}{f', {sizes}' if sizes else ''}{f', analysis {_label(analysis)}' if analysis else ''}."
-    ]
+    known = [_label(design.family), sizes, f"analysis {_label(analysis)}" if analysis else ""]
+    said = [f"Design {', '.join(filter(None, known))}."]
     for name, belief in design.nuisance.items():
         if isinstance(belief, Point):
             said.append(f"The {_label(name)} is taken as known: {_figure(belief.value)}.")
@@ -108,7 +107,8 @@ def _prior(study: Study) -> list[str]:
     given = f" if it is not exactly {_figure(study.null)}" if prior.probability_null > 0 else ""
     variable = prior.variable
     arm = prior.treatment is not None
-    opening = f"Before the study, the {'treated arm' if arm else 'effect'}{given} is believed to be: {variable.describe()}"
+    what = f"the {'treated arm' if arm else 'effect'}{given}"
+    opening = f"Before the study, {what} is believed to be: {variable.describe()}"
     said = [
         f"{opening}."
         if isinstance(variable, Point)

@@ -128,8 +128,13 @@ def _decoded(data: bytes, path: object) -> str:
         return data.decode("utf-8-sig")
     except UnicodeDecodeError as bad:
         line = data.count(b"\n", 0, bad.start) + 1
-        raise _refusal(path, Fault(where="", problem=f"not UTF-8 text in line {line}", got=f"byte 0x{data[bad.start]:02x}",
-                                   allowed="save the file as UTF-8")) from None  # fmt: skip
+        fault = Fault(
+            where="",
+            problem=f"not UTF-8 text in line {line}",
+            got=f"byte 0x{data[bad.start]:02x}",
+            allowed="save the file as UTF-8",
+        )
+        raise _refusal(path, fault) from None
 
 
 def _parsed(text: str, file: str) -> Tables:
@@ -277,7 +282,8 @@ def _assembled(tables: Tables, parts: Tables, source: dict[str, str]) -> tuple[S
             study = Study(
                 title=heading.title, question=heading.question, field=heading.field,
                 effect=parts.get("effect", Effect()), design=parts["design"], prior=parts["prior"],
-                rule=parts.get("rule") or schema.RULE_OF[schema.DEFAULT_RULE](), target=parts.get("target"), **source,
+                rule=parts.get("rule") or schema.RULE_OF[schema.DEFAULT_RULE](),
+                target=parts.get("target"), **source,
             )  # fmt: skip
     except StudyError as bad:
         return None, _from_prior(

@@ -7,8 +7,9 @@ needed, and only those that a file uses: all of them together would take longer 
 
 import dataclasses
 import functools
+import operator
 import types
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from typing import (
     Annotated,
     Any,
@@ -128,11 +129,8 @@ def json_schema() -> dict[str, Any]:
     """
     every = frozenset(DISTRIBUTION_OF)
     choices: dict[str, Any] = {
-        "design": Annotated[
-            Union[tuple(section_model("design", tag, every) for tag in FAMILY_OF)],
-            Field(discriminator="family"),
-        ],  # noqa: UP007
-        "rule": Union[tuple(section_model("rule", tag, every) for tag in RULE_OF)],  # noqa: UP007 (`type` may be absent)
+        "design": _either([section_model("design", tag, every) for tag in FAMILY_OF]),
+        "rule": _either([section_model("rule", tag, every) for tag in RULE_OF]),
     }
     keys: Keys = {
         name: (
@@ -209,6 +207,11 @@ def _key(words: str, default: Any) -> Any:
     return Field(default=default, description=about)
 
 
+def _either(annotations: Sequence[Any]) -> Any:
+    """The union of annotations that are only known at run time."""
+    return functools.reduce(operator.or_, annotations)
+
+
 def _model(name: str, about: str, keys: Keys) -> type[Table]:
     return cast(
         "type[Table]", create_model(name, __base__=Table, __doc__=about, **cast("dict[str, Any]", keys))
@@ -244,11 +247,8 @@ def _in_file(annotation: Any, belief: Any) -> Any:
         parts = [_in_file(part, belief) for part in get_args(annotation) if part is not type(None)]
         if Distribution in get_args(annotation) and len(parts) == 2:  # or one of some words
             tagged = Annotated[parts[0], Tag(f"{TAG}belief")], Annotated[parts[1], Tag(f"{TAG}word")]
-            return Annotated[
-                Union[tagged],
-                Discriminator(lambda value: f"{TAG}{'word' if isinstance(value, str) else 'belief'}"),
-            ]  # noqa: UP007
-        return Union[tuple(parts)]  # noqa: UP007
+            return Annotated[_either(tagged), Discriminator(_word_or_belief)]
+        return _either(parts)
     if dataclasses.is_dataclass(annotation):
         return Annotated[
             _table(annotation, str(getattr(annotation, "__name__", "table")), {}, belief),
@@ -263,8 +263,7 @@ def _belief(kinds: frozenset[str]) -> Any:
     tables = {kind: _distribution(kind) for kind in sorted(kinds)}
     tagged = [Annotated[table, AfterValidator(_build), Tag(TAG + kind)] for kind, table in tables.items()]
     number = Annotated[Number, AfterValidator(lambda value: Point(value=value)), Tag(f"{TAG}number")]
-    members = (number, *tagged)
-    whole = Annotated[Union[members], Discriminator(_tag_of)]  # noqa: UP007
+    whole = Annotated[_either([number, *tagged]), Discriminator(_tag_of)]
     for table in tables.values():  # a mixture holds what it is one of
         table.model_rebuild(_types_namespace={"Belief": whole})
     return whole
@@ -287,6 +286,10 @@ def _tag_of(value: Any) -> str | None:
         kind = value.get("distribution")
         return TAG + kind if isinstance(kind, str) else None
     return f"{TAG}number" if isinstance(value, int | float) and not isinstance(value, bool) else None
+
+
+def _word_or_belief(value: Any) -> str:
+    return f"{TAG}word" if isinstance(value, str) else f"{TAG}belief"
 
 
 def _build(table: Table) -> Any:
