@@ -22,6 +22,34 @@ def least_count(holds: Callable[[FloatArray], BoolArray], low: FloatArray, high:
     return low
 
 
+def root_of_increasing(
+    excess: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray, close: float
+) -> FloatArray:
+    """Roots of increasing functions, one in each bracket low..high, all worked on at once until every bracket is `close`.
+
+    False position that halves the value kept at a retained end (Illinois method, Dowell and Jarratt 1971).
+    """
+    at_low, at_high = excess(low), excess(high)
+    last = np.zeros(len(low))
+    for _ in range(60):
+        if (high - low).max() <= close:
+            break
+        gap = at_high - at_low
+        share = np.clip(np.where(gap > 0, at_high / np.where(gap > 0, gap, 1.0), 0.5), 1e-3, 1 - 1e-3)
+        middle = high - share * (high - low)
+        value = excess(middle)
+        up = value >= 0
+        at_high, at_low = (
+            np.where(up, value, np.where(last < 0, at_high / 2, at_high)),
+            np.where(up, np.where(last > 0, at_low / 2, at_low), value),
+        )
+        high, low = np.where(up, middle, high), np.where(up, low, middle)
+        last = np.where(up, 1.0, -1.0)
+        exact = np.abs(value) < 1e-14
+        low, high = np.where(exact, middle, low), np.where(exact, middle, high)
+    return (low + high) / 2
+
+
 type Meets = Callable[[list[int]], list[bool]]
 
 

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.search import root_of_increasing
 
 if TYPE_CHECKING:
     from bayesdesign.joint.integration import Setting, Truths
@@ -27,14 +28,14 @@ def median_multiple(setting: "Setting") -> FloatArray:
     excess, claimed = _excess(setting, truth_nodes(setting))
     low, high = _bracket(excess, claimed, np.zeros(len(claimed)), 0.5)
     if setting.outcomes.stepped:
-        return _finish(_root(lambda at: _relaid(setting, at), low, high, CLOSE), claimed)
+        return _finish(root_of_increasing(lambda at: _relaid(setting, at), low, high, CLOSE), claimed)
     if setting.outcomes.rough_within:
-        return _finish(_root(excess, low, high, ROUGH), claimed)
+        return _finish(root_of_increasing(excess, low, high, ROUGH), claimed)
     for close in ROUNDS:
-        found = _root(excess, low, high, close)
+        found = root_of_increasing(excess, low, high, close)
         excess, claimed = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(found, -FARTHEST, FARTHEST))))
         low, high = _bracket(excess, claimed, found, 4 * close)
-    return _finish(_root(excess, low, high, CLOSE), claimed)
+    return _finish(root_of_increasing(excess, low, high, CLOSE), claimed)
 
 
 def _relaid(setting: "Setting", at: FloatArray) -> FloatArray:
@@ -82,26 +83,3 @@ def _bracket(
         step *= 4
         low, high = np.where(too_high, low - step, low), np.where(too_low, high + step, high)
     return low, high
-
-
-def _root(
-    excess: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray, close: float
-) -> FloatArray:
-    """Root of an increasing function in each bracket: false position, halving a retained end (Dowell and Jarratt 1971)."""
-    at_low, at_high = excess(low), excess(high)
-    last = np.zeros(len(low))
-    for _ in range(60):
-        gap = at_high - at_low
-        share = np.where(gap > 0, at_high / np.where(gap > 0, gap, 1.0), 0.5)
-        middle = high - np.clip(share, 1e-3, 1 - 1e-3) * (high - low)
-        if (high - low).max() < close:
-            return middle
-        value = excess(middle)
-        up = value >= 0
-        at_high, at_low = (
-            np.where(up, value, np.where(last < 0, at_high / 2, at_high)),
-            np.where(up, np.where(last > 0, at_low / 2, at_low), value),
-        )
-        high, low = np.where(up, middle, high), np.where(up, low, middle)
-        last = np.where(up, 1.0, -1.0)
-    return (low + high) / 2

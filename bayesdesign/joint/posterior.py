@@ -9,6 +9,7 @@ import numpy as np
 from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.errors import Refused
 from bayesdesign.core.region import Region
+from bayesdesign.core.search import root_of_increasing
 from bayesdesign.joint.integration import LEVELS, Setting, distances, set_up, truth_nodes
 from bayesdesign.study.study import Study
 
@@ -55,7 +56,7 @@ def posterior_by_integration(study: Study, n: int | None, evidence: Evidence, ma
     """
     before = _at_level(study, n, evidence, mass, 0)
     for level in range(1, len(LEVELS)):
-        now = _at_level(study, n, evidence, mass, level)
+        now = _at_level(study, n, evidence, mass, level, before)
         errors = {name: abs(value - before[name]) + 1e-13 * max(1.0, abs(value)) for name, value in now.items()}
         scale = max(1.0, abs(now["mean"]), now["sd"])
         if max(error for name, error in errors.items() if name != "evidence") <= min(5e-9, tolerance) * scale:
@@ -72,7 +73,10 @@ def posterior_by_integration(study: Study, n: int | None, evidence: Evidence, ma
     return Posterior(states={name: now[f"P({name})"] for name in names}, mass=mass, errors=errors, **plain)
 
 
-def _at_level(study: Study, n: int | None, evidence: Evidence, mass: float, level: int) -> dict[str, float]:
+def _at_level(
+    study: Study, n: int | None, evidence: Evidence, mass: float, level: int, before: dict[str, float] | None = None
+) -> dict[str, float]:
+    """The numbers at one level; those of the level `before` say where to look for the quantiles."""
     setting = set_up(study, [n], level)
     if evidence.regions is not None:
         setting = replace(setting, regions=evidence.regions(setting))
@@ -96,7 +100,8 @@ def _at_level(study: Study, n: int | None, evidence: Evidence, mass: float, leve
     state = study.states.classify(distance, exactly_null)
     mean = float(weight @ effect)
     ranks = np.array([(1 - mass) / 2, 0.5, (1 + mass) / 2])
-    low, median, high = _quantiles(weigh, effect, weight, ranks)
+    near = None if before is None else np.array([before["low"], before["median"], before["high"]])
+    low, median, high = _quantiles(weigh, _atoms(study), ranks, near)
     return {
         **{f"P({name})": float(weight[state == i].sum()) for i, name in enumerate(study.states.names)},
         "mean": mean,
@@ -110,41 +115,49 @@ def _at_level(study: Study, n: int | None, evidence: Evidence, mass: float, leve
     }
 
 
+def _atoms(study: Study) -> FloatArray:
+    """Effects with a point mass."""
+    null = [study.null] if study.exact_null_weight > 0 else []
+    return np.unique([*null, *(study.prior.effect.atoms()[0] if study.prior.effect is not None else [])])
+
+
 def _quantiles(
-    weigh: Callable[[Sequence[float]], tuple[FloatArray, FloatArray]], effect: FloatArray, weight: FloatArray, ranks: FloatArray
+    weigh: Callable[[Sequence[float]], tuple[FloatArray, FloatArray]], atoms: FloatArray, ranks: FloatArray, near: FloatArray | None
 ) -> tuple[float, float, float]:
-    """Quantiles of the effect: bracketed by the nodes, then sought with panels that end on the candidates themselves."""
-    order = np.argsort(effect, kind="stable")
-    at, below = effect[order], np.cumsum(weight[order])
-    k = np.clip(np.searchsorted(below, ranks), 0, len(at) - 1)
+    """Quantiles of the effect: bracketed close to `near` or by the nodes, then sought with panels that end on the candidates."""
+    effect, weight = weigh(tuple(atoms))
+
     def excess(points: FloatArray) -> FloatArray:
         nodes, weights = weigh(tuple(points))
         slack = 1e-14 * np.maximum(1.0, np.abs(points))
         return np.array([weights[nodes <= p + s].sum() for p, s in zip(points, slack, strict=True)]) - ranks
 
-    reach, last = 4, np.zeros(3)
-    while True:
+    low, high = _bracket(excess, effect, weight, ranks, near)
+    for atom in atoms:
+        inside = (weight[effect < atom].sum() < ranks) & (ranks <= weight[effect <= atom].sum())
+        low, high = np.where(inside, atom, low), np.where(inside, atom, high)
+    close = 1e-12 * max(1e-300, float(np.max(np.abs(high))))
+    return tuple(map(float, root_of_increasing(excess, low, high, close)))  # type: ignore[return-value]
+
+
+def _bracket(
+    excess: Callable[[FloatArray], FloatArray], effect: FloatArray, weight: FloatArray, ranks: FloatArray, near: FloatArray | None
+) -> tuple[FloatArray, FloatArray]:
+    """Effects on either side of each quantile: close to `near` if that holds, else a few nodes apart."""
+
+    def holds(low: FloatArray, high: FloatArray) -> bool:
+        return bool((excess(low) <= 0).all() and (excess(high) >= 0).all())
+
+    if near is not None:
+        margin = 1e-5 * float(np.sqrt(weight @ (effect - weight @ effect) ** 2))
+        if holds(near - margin, near + margin):
+            return near - margin, near + margin
+    order = np.argsort(effect, kind="stable")
+    at = effect[order]
+    k = np.clip(np.searchsorted(np.cumsum(weight[order]), ranks), 0, len(at) - 1)
+    reach = 4
+    while True:  # nodes of different nuisance values interleave, so a quantile can lie some nodes off
         low, high = at[np.maximum(k - reach, 0)], at[np.minimum(k + reach, len(at) - 1)]
-        at_low, at_high = excess(low), excess(high)
-        if reach >= len(at) or ((at_low <= 0).all() and (at_high >= 0).all()):
-            break
+        if reach >= len(at) or holds(low, high):
+            return low, high
         reach *= 4
-    close = 1e-12 * max(1e-300, float(np.max(np.abs(high))), float(np.ptp(at)) * 1e-3)
-    for step in range(120):
-        gap = at_high - at_low
-        share = np.clip(np.where(gap > 0, at_high / np.where(gap > 0, gap, 1.0), 0.5), 0.02, 0.98)
-        # every third step halves, for a quantile that sits in the jump at a point mass
-        middle = np.where(high > low, high - (0.5 if step % 3 == 2 else share) * (high - low), high)
-        if (high - low).max() <= close:
-            break
-        value = excess(middle)
-        up = value >= 0
-        at_high, at_low = (
-            np.where(up, value, np.where(last < 0, at_high / 2, at_high)),
-            np.where(up, np.where(last > 0, at_low / 2, at_low), value),
-        )
-        high, low = np.where(up, middle, high), np.where(up, low, middle)
-        last = np.where(up, 1.0, -1.0)
-        found = np.abs(value) < 1e-13
-        low, high = np.where(found, middle, low), np.where(found, middle, high)
-    return tuple(map(float, high))  # type: ignore[return-value]
