@@ -37,13 +37,19 @@ class Outcomes(abc.ABC):
     The estimate and its distance from the null are on the working scale (the logarithm, for ratios).
     """
 
-    stepped: ClassVar[bool] = False  # probabilities_within jumps where a count enters the reach, and landmarks name every jump
-
-    rough_within: ClassVar[bool] = False  # it jumps at more counts than landmarks could name
-
     @abc.abstractmethod
     def test(self, value: float, level: float, side: Side) -> Region:
         """Where the one-sided test of "the effect is not on this side of `value`" rejects at `level`."""
+
+    @property
+    def stepped(self) -> bool:
+        """Whether `probabilities_within` jumps where a count enters the reach, and `landmarks` name every jump."""
+        return False
+
+    @property
+    def rough_error(self) -> float:
+        """What `probabilities_within` leaves unsure of a median, relative, where it jumps at more counts than landmarks name; else 0."""
+        return 0.0
 
     @property
     def work(self) -> int:

@@ -1,6 +1,7 @@
-"""Log probability of a decision given the truth, as an expression of a PyMC model: for posteriors that know the decision alone.
+"""Log probability of a decision given the truth, in PyTensor: for posteriors that know the decision alone.
 
-Independent of the regions of the integration route: where a decision begins and ends is found by asking the analyst.
+Independent of the regions of the integration route: where a decision begins and ends is found by asking the
+analyst.
 """
 
 from collections.abc import Callable, Sequence
@@ -13,23 +14,27 @@ from bayesdesign.core.errors import NotOffered
 from bayesdesign.design.base import Analysis
 from bayesdesign.design.normal_line import NormalAnalysis
 
-type Decides = Callable[[Analysis], BoolArray]  # for each analysed study, whether it led to the decision in question
+type Decides = Callable[[Analysis], BoolArray]  # for each analysed study, whether it led to the decision
 type LogLikelihood = Callable[[Any], Any]  # from an effect to the log probability of the decision
 
 GRID = 4001
-FARTHEST = 1e7  # statistics searched for decisions; beyond it a t test with 1 degree of freedom still has p = 3e-8
-STEPS = 4000  # of the table of t quantiles against 1 / df; linear interpolation errs by less than 1e-6 of the quantile
+FARTHEST = 1e7  # statistics searched for decisions; there a t test with 1 degree of freedom has p = 3e-8
+STEPS = 4000  # of the table of t quantiles against 1 / df, which is interpolated linearly
 
 
 def tail_intervals(decides: Decides, null: float) -> list[tuple[float, float]]:
-    """Where a decision falls, as intervals (smaller, larger) of the p-value towards higher of the test of the null.
+    """Where a decision falls, as intervals (smaller, larger) of the one-sided p-value towards higher.
 
     Raises `NotOffered` when the decision depends on anything else than that p-value.
     """
     tried = [_intervals(decides, null, scale, df) for scale, df in ((1.0, np.inf), (2.5, np.inf), (1.0, 5.0))]
-    if any(len(other) != len(tried[0]) or not np.allclose(other, tried[0], rtol=1e-6, atol=0) for other in tried[1:]):
+    first = np.array(tried[0])
+    if any(
+        len(other) != len(first) or not np.allclose(other, first, rtol=1e-6, atol=0) for other in tried[1:]
+    ):
         raise NotOffered(
-            "NUTS knows the probability of a decision only where the p-value alone decides; use --route integration"
+            "NUTS knows the probability of a decision only where the p-value alone decides; "
+            "use --route integration"
         )
     if not tried[0]:
         raise NotOffered("this decision never falls, so there is no posterior given it")
@@ -57,17 +62,24 @@ def _intervals(decides: Decides, null: float, scale: float, df: float) -> list[t
 
 
 def by_normal(
-    pm: Any, tails: Sequence[tuple[float, float]], df: float | tuple[Any, float, float], null: float, se: Any, reported: Any
+    pm: Any,
+    tails: Sequence[tuple[float, float]],
+    df: float | tuple[Any, float, float],
+    null: float,
+    se: Any,
+    reported: Any,
 ) -> LogLikelihood:
-    """An estimate that is normal around the effect with standard error `se`, tested with the reported standard error.
+    """An estimate that is normal around the effect with standard error `se`, tested with the reported one.
 
-    df: degrees of freedom of the test, infinite for z; or an expression with the least and the largest value it can have.
+    tails: from `tail_intervals`. df: degrees of freedom of the test, infinite for z; or an expression with
+    the least and the largest value it can have.
     """
     bounds = [tuple(_quantile(pm, p, df) for p in (larger, smaller)) for smaller, larger in tails]
 
     def log_probability(effect: Any) -> Any:
         parts = [
-            log_between(pm, *(None if c is None else (null + c * reported - effect) / se for c in pair)) for pair in bounds
+            log_between(pm, *(None if c is None else (null + c * reported - effect) / se for c in pair))
+            for pair in bounds
         ]
         total = parts[0]
         for part in parts[1:]:
@@ -96,7 +108,10 @@ def _quantile(pm: Any, p: float, df: float | tuple[Any, float, float]) -> Any:
 
 
 def log_between(pm: Any, low: Any, high: Any) -> Any:
-    """Log probability of a standard normal variable between two bounds, None for an infinite one; right far out in a tail."""
+    """Log probability that a standard normal variable lies between two bounds, None for an infinite one.
+
+    Right far out in a tail.
+    """
 
     def log_cdf(x: Any) -> Any:
         return pm.logcdf(pm.Normal.dist(np.float64(0), np.float64(1)), x)

@@ -96,8 +96,8 @@ effect = { distribution = "beta", mean = 0.38, size = 25 }
     def decision_likelihood(
         self, pm: Any, nuisance: Mapping[str, Any], n: int, null: float, decides: Decides
     ) -> LogLikelihood:
-        every = np.arange(n + 1)
-        count = every[decides(self.analyse({"count": every}, nuisance, n))].astype(float)
+        every = np.arange(n + 1.0)
+        count = every[decides(self.analyse({"count": every}, nuisance, n))]
         if not count.size:
             raise NotOffered("this decision never falls, so there is no posterior given it")
         return lambda effect: pm.math.logsumexp(log_binomial(pm, count, n, effect), keepdims=False)
@@ -107,8 +107,6 @@ effect = { distribution = "beta", mean = 0.38, size = 25 }
 @dataclass(frozen=True, slots=True, kw_only=True)
 class BinomialCount(Outcomes):
     """The outcome is the count x among n (N,); the estimate is x / n."""
-
-    stepped: ClassVar[bool] = True
 
     n: FloatArray
     null: float
@@ -146,6 +144,10 @@ class BinomialCount(Outcomes):
         p = running[np.searchsorted(pmf[order], pmf * (1 + 1e-7), side="right")]
         kept = np.flatnonzero(p > level * TIE)  # the mode is always kept: its p-value is 1
         return kept[0] - 0.5, kept[-1] + 0.5
+
+    @property
+    def stepped(self) -> bool:
+        return True
 
     def null_outcome(self) -> FloatArray:
         return (self.n * self.null)[:, None, None]

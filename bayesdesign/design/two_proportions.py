@@ -13,7 +13,7 @@ from bayesdesign.design.base import Accuracy, Analysis, Design, Side, Tails
 from bayesdesign.design.decided import Decides, LogLikelihood, log_binomial
 from bayesdesign.design.fisher import conditional_bounds
 from bayesdesign.design.groups import check_sizes, group_sizes
-from bayesdesign.design.two_counts import TwoCounts
+from bayesdesign.design.two_counts import IDENTITY, TwoCounts
 from bayesdesign.prior.base import Distribution
 
 MOST_TABLES = 250_000  # for NUTS, which sums over all of them some ten thousand times
@@ -222,8 +222,10 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
     ) -> LogLikelihood:
         treated, control = (int(size) for size in self._sizes(np.asarray(float(n))))
         if (treated + 1) * (control + 1) > MOST_TABLES:
-            raise NotOffered(f"NUTS sums over every table, up to {MOST_TABLES} of them; use --route integration for groups this large")
-        x, y = (np.arange(size + 1) for size in (treated, control))
+            raise NotOffered(
+                f"NUTS sums over every table, up to {MOST_TABLES}; use --route integration for groups this large"
+            )
+        x, y = (np.arange(size + 1.0) for size in (treated, control))
         tables = dict(zip(("treated_events", "control_events"), np.meshgrid(x, y, indexing="ij"), strict=True))
         flat = {name: counts.ravel() for name, counts in tables.items()}
         chosen = decides(self.analyse(flat, nuisance, n)).reshape(len(x), len(y)).astype(float)
@@ -233,9 +235,9 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
 
         def log_probability(effect: Any) -> Any:
             share = self._symbolic_treatment(effect, nuisance["control"])
-            given_x = pm.math.dot(chosen, pm.math.exp(log_binomial(pm, y.astype(float), control, nuisance["control"])))
+            given_x = pm.math.dot(chosen, pm.math.exp(log_binomial(pm, y, control, nuisance["control"])))
             return pm.math.logsumexp(
-                log_binomial(pm, x.astype(float), treated, share) + pm.math.log(given_x + least), keepdims=False
+                log_binomial(pm, x, treated, share) + pm.math.log(given_x + least), keepdims=False
             )
 
         return log_probability
@@ -251,7 +253,7 @@ def _log_odds(x: FloatArray, n: float) -> FloatArray:
 
 
 TRANSFORMS = {"difference": lambda x, n: x / n, "ratio": _log_share, "odds_ratio": _log_odds}
-INVERSES = {"difference": lambda t: t, "ratio": np.exp, "odds_ratio": special.expit}
+INVERSES = {"difference": IDENTITY, "ratio": np.exp, "odds_ratio": special.expit}
 
 
 @final

@@ -6,7 +6,7 @@ from typing import final
 
 import numpy as np
 
-from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.core.region import Region
 from bayesdesign.design.base import Accuracy, Outcomes
 from bayesdesign.joint.table import Joint
@@ -97,7 +97,9 @@ class Truths:
     weight: FloatArray
 
 
-def truth_nodes(setting: Setting, cuts: Sequence[float] = (), multiple: FloatArray | None = None) -> Truths:
+def truth_nodes(
+    setting: Setting, cuts: Sequence[float] = (), multiple: FloatArray | None = None, order: int | None = None
+) -> Truths:
     """Nodes of the joint prior, with panels that end on the null, the state boundaries, `cuts` and the bends of the power curve
     (with `multiple`, on those of the probability within that multiple of the effect's distance too)."""
     study = setting.study
@@ -107,7 +109,7 @@ def truth_nodes(setting: Setting, cuts: Sequence[float] = (), multiple: FloatArr
     rows, columns = len(setting.n), len(setting.nuisance_weight)
     edges = np.concatenate([np.broadcast_to(fixed, (rows, columns, fixed.size)), marks], axis=2)
     edges = np.nan_to_num(setting.to_variable(edges), nan=float(low[0]) if np.isfinite(low[0]) else 0.0)
-    variable, weight = variable_nodes(study.prior.variable, edges, low, high, setting.order)
+    variable, weight = variable_nodes(study.prior.variable, edges, low, high, order or setting.order)
     weight = weight * setting.nuisance_weight[:, None]
     # impossible pairs are cut off and the rest scaled up (the study was refused if more than a trace is cut)
     weight = weight / weight.sum(axis=(1, 2), keepdims=True) * (1 - study.prior.probability_null)
@@ -156,7 +158,7 @@ def integrate(study: Study, n: Sequence[int | None], level: int) -> Joint:
     )
 
 
-def distances(study: Study, effect: FloatArray) -> tuple[FloatArray, FloatArray]:
+def distances(study: Study, effect: FloatArray) -> tuple[FloatArray, BoolArray]:
     """Distance from the null on the working scale, and whether it is exactly 0."""
     exactly_null = np.abs(effect - study.null) <= 1e-12 * max(1.0, abs(study.null))
     with np.errstate(divide="ignore"):

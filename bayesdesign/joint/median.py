@@ -13,23 +13,33 @@ if TYPE_CHECKING:
 
 FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
 ROUNDS = (1e-3, 1e-6)  # width in log multiple at which a round of the search stops and the panels are laid anew
+STEPPED = 1e-7  # the same where the panels are laid anew at every step
 ROUGH = 2e-5  # the same where the probability jumps at more counts than panels can end on
 CLOSE = 1e-11  # the same for the last round
 
 
-def median_multiple(setting: "Setting") -> FloatArray:
+def median_multiple(setting: "Setting", near: FloatArray | None = None) -> FloatArray:
     """Least multiple c with P(claim, |estimate - null| <= c |distance|, not exactly null) at half of P(claim, not exactly null), (N,).
 
-    Sought in rounds, each with panels that end on the kinks at the multiple found before. NaN where nothing is claimed,
+    Sought in rounds, each with panels that end on the kinks at the multiple found before, from `near` if something is known. NaN where nothing is claimed,
     infinite where no multiple suffices.
     """
     from bayesdesign.joint.integration import truth_nodes
 
     excess, claimed = _excess(setting, truth_nodes(setting))
-    low, high = _bracket(excess, claimed, np.zeros(len(claimed)), 0.5)
+    known = near is not None and bool(np.isfinite(near).all() and (near > 0).all())
+    start, step = (np.log(near), 1e-3) if near is not None and known else (np.zeros(len(claimed)), 0.5)
     if setting.outcomes.stepped:
-        return _finish(root_of_increasing(lambda at: _relaid(setting, at), low, high, CLOSE), claimed)
-    if setting.outcomes.rough_within:
+        low, high = _bracket(excess, claimed, start, 10 * step)  # by the panels at hand: about right, and cheap
+        rough = root_of_increasing(excess, low, high, 1e-3)
+
+        def relaid(at: FloatArray) -> FloatArray:
+            return _relaid(setting, at)
+
+        low, high = _bracket(relaid, claimed, rough if not known else start, 1e-4 if known else 3e-3)
+        return _finish(root_of_increasing(relaid, low, high, STEPPED), claimed)
+    low, high = _bracket(excess, claimed, start, step)
+    if setting.outcomes.rough_error:
         return _finish(root_of_increasing(excess, low, high, ROUGH), claimed)
     for close in ROUNDS:
         found = root_of_increasing(excess, low, high, close)
@@ -42,7 +52,9 @@ def _relaid(setting: "Setting", at: FloatArray) -> FloatArray:
     """The excess with panels that end on the jumps at this very multiple."""
     from bayesdesign.joint.integration import truth_nodes
 
-    excess, _ = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(at, -FARTHEST, FARTHEST))))
+    # panels between neighbouring jumps are narrow, so few nodes do
+    nodes = truth_nodes(setting, multiple=np.exp(np.clip(at, -FARTHEST, FARTHEST)), order=max(3, setting.order // 3))
+    excess, _ = _excess(setting, nodes)
     return excess(at)
 
 

@@ -1,23 +1,24 @@
-"""Monte Carlo standard errors: ratios of sums, medians, and quantiles of a probability that is itself only estimated."""
+"""Monte Carlo standard errors: of ratios of sums, medians, and quantiles of a probability only estimated."""
 
 import numpy as np
 
-from bayesdesign.core.arrays import FloatArray
+from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.joint.table import Cells
 from bayesdesign.measures.ratios import Ratio
 
 BATCHES = 100
-# Four more observations than were made, half of them events: with k of n events seen the variance is about (k + 4) / n^2, so
-# that no count, however small, is taken for certain (after Agresti and Coull 1998). Without it, seeing 0 where 5.1 are
-# expected would be called a difference of 5 errors in 0.6 % of all runs; with it in less than 0.01 %.
+# With k of n events seen the variance is about (k + 4) / n^2, so that no count, however small, is taken for
+# certain (after Agresti and Coull 1998). Without the 4, seeing none where 5.1 are expected, which happens in
+# 0.6 % of all runs, would count as more than 5 standard errors; with it the chance is less than 0.01 %.
 UNSEEN = 2.0
 
 
 def jackknife(whole: Ratio, without: Ratio, count: FloatArray, scale: FloatArray | float) -> FloatArray:
     """Standard error of a ratio of sums, leading axis N.
 
-    whole: (N, 1), from all draws; without: (N, B), each without one batch (delete-a-group jackknife, Quenouille 1956; Tukey
-    1958). count (N,): draws under the ratio's condition, scale: size of one draw's contribution, 1 for a rate.
+    whole: (N, 1), from all draws; without: (N, B), each without one batch (delete-a-group jackknife,
+    Quenouille 1956; Tukey 1958). count (N,): draws under the ratio's condition; scale: the size of what one draw
+    contributes, 1 for a rate.
     """
     left = without.value
     centre = np.where(np.isfinite(left), left - whole.value, 0.0)
@@ -43,8 +44,8 @@ def quantile(ordered: FloatArray, level: float) -> float:
 def quantile_error(ordered: FloatArray, level: float) -> float:
     """Standard error of a quantile of a sorted sample, by the order statistics around it (Woodruff 1952).
 
-    The larger of the half-widths at 2 and at 5 binomial standard errors, each divided by that number: where the sample has
-    atoms or a gap near the quantile, the narrow one alone can be 0 though the wide one is not.
+    The larger of the half-widths at 2 and at 5 binomial standard errors, each divided by that number: where
+    the sample has atoms or a gap near the quantile, the narrow one alone can be 0 though the wide one is not.
     """
     count = len(ordered)
     step = np.sqrt(count * level * (1 - level))
@@ -56,14 +57,15 @@ def quantile_error(ordered: FloatArray, level: float) -> float:
     return float(max(widths))
 
 
-def power_quantile(successes: FloatArray, level: float) -> tuple[float, float]:
-    """Quantile of the probability p over truths and its standard error; successes (truths, 2, studies / 2) are 0 or 1.
+def power_quantile(successes: BoolArray, level: float) -> tuple[float, float]:
+    """Quantile of the probability p over truths and its standard error; successes (truths, 2, studies / 2).
 
-    The share of successes is p plus binomial noise, which spreads the quantiles outwards: by c / studies where p has a smooth
-    density, by c / sqrt(studies) where it has an atom. The quantile from all studies and the mean of those from either half give
-    an estimate of that bias (Richardson); it is subtracted once, which leaves nothing to first order in the smooth case and 0.6 of
-    the bias at an atom. The error holds the order statistics of the truths, 1.5 times the subtracted bias (so that it covers
-    an atom), and the resolution of the shares.
+    The share of successes is p plus binomial noise, which spreads the quantiles outwards: by c / studies
+    where p has a smooth density, by c / sqrt(studies) where it has an atom. The quantile from all studies and the
+    mean of those from either half give an estimate of that bias (Richardson extrapolation); it is subtracted
+    once, which leaves nothing to first order in the smooth case and 0.6 of the bias at an atom. The error
+    holds the order statistics of the truths, 1.5 times the subtracted bias (so that it covers an atom), and the
+    resolution of the shares.
     """
     inner = successes.shape[1] * successes.shape[2]
     halves = np.sort(successes.mean(axis=2), axis=0)

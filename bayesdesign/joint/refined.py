@@ -130,14 +130,17 @@ def _distributions(study: Study, main: Refined) -> dict[str, Number]:
         why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
         ratio = missing(len(ratio.value), why)
     fine, coarse = set_up(study, main.joint.n, main.level), set_up(study, main.joint.n, main.level - 1)
-    if fine.outcomes.rough_within:  # more nodes cost much and gain little where the probability jumps at every count
+    if fine.outcomes.rough_error or fine.outcomes.stepped:  # more nodes cost much and gain little where the probability jumps at every count
         fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
     power = power_quantiles(fine, POWER_LEVELS)
     change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING
-    median = median_multiple(fine)
+    near = median_multiple(coarse)
+    median = median_multiple(fine, near)
+    rough = fine.outcomes.rough_error
+    change_of_median = _change(median, near) * (3 if rough else 1) + rough
     return {
         "exaggeration_ratio": ratio,
-        "exaggeration_median": Number(median, _change(median, median_multiple(coarse)), NO_CLAIM),
+        "exaggeration_median": Number(median, change_of_median, NO_CLAIM),
         "power_quantiles": Number(power, change),
     }
 

@@ -1,12 +1,13 @@
 """The sampling route: studies drawn from a PyMC model and decided one by one, as an analyst would.
 
-It shares with the integration route only the names of states and decisions and the readings of the table: no region, no critical
-value and no node. Each draw is a row of the joint table with weight 1 / draws and probability 1 in one column.
+It shares with the integration route only the names of states and decisions and the readings of the table: no
+region, no critical value and no node. Each draw is a row of the joint table with weight 1 / draws and
+probability 1 in one column.
 """
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import final
+from typing import Any, final
 
 import numpy as np
 
@@ -27,7 +28,8 @@ from bayesdesign.joint.table import Cells, Joint, cells
 from bayesdesign.measures.ratios import Frame, planning_readings, readings
 from bayesdesign.study.study import Study
 
-KEPT = 1_000_000  # rows, over all n of a call, of the table that goes with the result; every draw counts in the numbers
+# Rows, over all n of a call, of the table that goes with the result (bounds memory; numbers use all draws).
+KEPT = 1_000_000
 ROUNDS = 100  # draws of the prior after which a truth that is still impossible ends the run
 PLANNING = ("power_at_planning_value", "type_s_at_planning_value", "exaggeration_at_planning_value")
 NEVER = "the rule never claims an effect that is not exactly null"
@@ -37,9 +39,9 @@ NO_MEAN = "the prior has no mean, so the ratio of expectations does not exist; s
 def sampled(study: Study, n: Sequence[int | None], seed: int, draws: int) -> Numbers:
     """Every quantity of the study at these sizes, with Monte Carlo standard errors.
 
-    `draws` is raised to a multiple of 100 (the batches of the standard errors). The same seed gives the same numbers in any
-    process; each n has its own stream, derived from the seed and n alone, so that it does not matter which others are asked for.
-    Raises `Refused` when the prior hardly ever gives a possible truth.
+    `draws` is raised to a multiple of 100 (the batches of the standard errors). The same seed gives the same
+    numbers in any process; each n has its own stream, derived from the seed and n alone, so that it does not
+    matter which others are asked for. Raises `Refused` when the prior hardly ever gives a possible truth.
     """
     draws = max(1, -(-draws // BATCHES)) * BATCHES
     runs = [_run(study, size, np.random.SeedSequence(seed, spawn_key=(size or 0,)), draws) for size in n]
@@ -102,9 +104,11 @@ class Run:
 def _run(study: Study, n: int | None, seed: np.random.SeedSequence, draws: int) -> Run:
     """Draw the truths of all three blocks at once, then all their studies at once, and read the tables."""
     fixed = at_planning_value(study)
-    outer = inner = 2 * max(1, int(np.sqrt(draws)) // 2)  # even, so that the studies of one truth have two halves
+    outer = inner = 2 * max(
+        1, int(np.sqrt(draws)) // 2
+    )  # even, so that the studies of one truth have two halves
     without_spike = replace(study, prior=replace(study.prior, probability_null=0.0))
-    nested = Block(study=without_spike, count=outer, real=study.prior.variable.atoms()[1].sum() < 1)
+    nested = Block(study=without_spike, count=outer, real=_spread(study))
     blocks = [Block(study=study, count=draws), nested]
     if isinstance(fixed, Study):
         blocks.append(Block(study=fixed, count=draws))
@@ -128,14 +132,19 @@ def _run(study: Study, n: int | None, seed: np.random.SeedSequence, draws: int) 
         numbers=numbers,
         cells=batches.by_state.sum(axis=1),
         cells_error=cells_error(batches, draws),
-        joint=replace(table, power_quantiles=lambda levels: _power(successes, levels).value),
+        joint=table,
     )
 
 
 def _truths(blocks: Sequence[Block], seed: np.random.SeedSequence) -> list[Truths]:
-    """Truths of every block. A pair of effect and nuisance that cannot exist is drawn anew, as the integration route leaves it out."""
+    """Truths of every block.
+
+    A pair of effect and nuisance that cannot exist is drawn anew, as the integration route leaves it out.
+    """
     null, drawn = _prior_draws(blocks, [block.count for block in blocks], seed.spawn(1)[0])
-    usable = [_usable(block, truths) | at_null for block, truths, at_null in zip(blocks, drawn, null, strict=True)]
+    usable = [
+        _usable(block, found) | at_null for block, found, at_null in zip(blocks, drawn, null, strict=True)
+    ]
     truths = [
         Truths(effect=np.where(at_null, block.study.null, found.effect), nuisance=found.nuisance)
         for block, found, at_null in zip(blocks, drawn, null, strict=True)
@@ -157,13 +166,23 @@ def _truths(blocks: Sequence[Block], seed: np.random.SeedSequence) -> list[Truth
             for name, value in into.nuisance.items():
                 value[place] = new.nuisance[name][found]
             good[place] = True
-    raise Refused("the prior hardly ever gives a possible truth", "narrow [prior] or a nuisance parameter with truncated = [low, high]")
+    raise Refused(
+        "the prior hardly ever gives a possible truth",
+        "narrow [prior] or a nuisance parameter with truncated = [low, high]",
+    )
+
+
+def _spread(study: Study) -> bool:
+    """Whether the prior's own distribution can give an effect that is not exactly null."""
+    values, masses = study.prior.variable.atoms()
+    at_null = [study.prior.treatment is None and study.is_null(float(value)) for value in values]
+    return float(masses[at_null].sum()) < 1 - 1e-12
 
 
 def _prior_draws(
     blocks: Sequence[Block], counts: Sequence[int], seed: np.random.SeedSequence
 ) -> tuple[list[BoolArray], list[Truths]]:
-    """For every block, which truths are exactly null by `probability_null`, and draws of effect and nuisance, possible or not."""
+    """For every block, which truths are null by `probability_null`, and draws, possible or not."""
     import pymc as pm
 
     variables = []
@@ -174,7 +193,10 @@ def _prior_draws(
                 {
                     "null": pm.Bernoulli(f"null_{i}", p=np.float64(prior.probability_null), shape=(count,)),
                     "variable": prior.variable.random_variable(pm, f"variable_{i}", (count,)),
-                    **{f"by {name}": b.random_variable(pm, f"{name}_{i}", (count,)) for name, b in nuisance.items()},
+                    **{
+                        f"by {k}": belief.random_variable(pm, f"{k}_{i}", (count,))
+                        for k, belief in nuisance.items()
+                    },
                 }
             )
         flat = _draw([v for found in variables for v in found.values()], seed)
@@ -193,8 +215,8 @@ def _prior_draws(
 def _draw(variables: list[object], seed: np.random.SeedSequence) -> list[FloatArray]:
     """One draw of all variables, by NumPy's generators.
 
-    FAST_COMPILE leaves the few operations to NumPy: as quick for arrays of this size as compiled code (measured: 0.05 s against
-    0.06 s a million), without its compilation of half a second to two for every n.
+    FAST_COMPILE leaves the few operations to NumPy: as quick for arrays of this size as compiled code
+    (measured: 0.05 s against 0.06 s a million), without its compilation of half a second to two for every n.
     """
     import pymc as pm
 
@@ -245,6 +267,8 @@ def _joint(study: Study, n: int | None, part: Decided) -> Joint:
     count, width = len(part.decision), len(study.rule.decisions)
     distance, exactly_null = distances(study, part.truths.effect)
     probability = np.eye(width)[part.decision]
+    absolute = probability * np.abs(part.estimate - study.working_null)[:, None]
+    absolute[:, -1] = 0.0  # by agreement with the integration route
     return Joint(
         n=(n,),
         decisions=study.rule.decisions,
@@ -256,10 +280,8 @@ def _joint(study: Study, n: int | None, part: Decided) -> Joint:
         states=study.states.names,
         weight=np.full((1, count), 1 / count),
         probability=probability[None],
-        absolute=(probability * np.abs(part.estimate - study.working_null)[:, None])[None],
+        absolute=absolute[None],
         limit=study.rule.limit(distance)[None],
-        median_multiple=lambda: _median(study, _joint(study, n, part)).value,
-        power_quantiles=lambda levels: np.full((1, len(levels)), np.nan),
     )
 
 
@@ -271,7 +293,7 @@ def _numbers(study: Study, batches: Cells, read: Reader, draws: int) -> dict[str
     numbers = {}
     for name, ratio in whole.items():
         value, weight = ratio.value[:, 0], ratio.denominator[:, 0]
-        mean = name.startswith("exaggeration")  # a ratio of means over claims of a real effect; all others are rates
+        mean = name.startswith("exaggeration")  # of claims of a real effect; all others are rates
         count, scale = (real_claims, np.abs(value)) if mean else (draws * weight, 1.0)
         numbers[name] = Number(value, jackknife(ratio, without[name], count, scale), ratio.why_null, weight)
     return numbers
@@ -292,9 +314,8 @@ def _median(study: Study, table: Joint) -> Number:
     if not len(size):
         return missing(1, NEVER)
     multiples = np.sort(size / np.abs(table.distance[0][chosen]))
-    return Number(
-        np.array([quantile(multiples, 0.5)]), np.array([quantile_error(multiples, 0.5)]), NEVER, np.array([chosen.mean()])
-    )
+    middle, error = quantile(multiples, 0.5), quantile_error(multiples, 0.5)
+    return Number(np.array([middle]), np.array([error]), NEVER, np.array([chosen.mean()]))
 
 
 def _power(successes: BoolArray, levels: Sequence[float]) -> Number:
@@ -315,16 +336,22 @@ def _beside(numbers: Sequence[Number]) -> Number:
 def _stacked(tables: Sequence[Joint], rows: int) -> Joint:
     """One table over all n, of the first `rows` draws of each."""
 
-    def stack(field: str) -> FloatArray:
+    def stack(field: str) -> Any:
         return np.concatenate([getattr(table, field)[:, :rows] for table in tables])
 
     first = tables[0]
     return replace(
         first,
         n=tuple(size for table in tables for size in table.n),
-        **{f: stack(f) for f in ("effect", "distance", "exactly_null", "state", "probability", "absolute", "limit")},
-        nuisance={name: np.concatenate([t.nuisance[name][:, :rows] for t in tables]) for name in first.nuisance},
+        effect=stack("effect"),
+        distance=stack("distance"),
+        exactly_null=stack("exactly_null"),
+        nuisance={
+            name: np.concatenate([t.nuisance[name][:, :rows] for t in tables]) for name in first.nuisance
+        },
+        state=stack("state"),
         weight=np.full((len(tables), rows), 1 / rows),
-        median_multiple=lambda: np.concatenate([table.median_multiple() for table in tables]),
-        power_quantiles=lambda levels: np.concatenate([table.power_quantiles(levels) for table in tables]),
+        probability=stack("probability"),
+        absolute=stack("absolute"),
+        limit=stack("limit"),
     )

@@ -83,8 +83,8 @@ class Uniform(Plain):
 class Beta(Plain):
     """Beta distribution on 0 to 1, density proportional to x^(a - 1) (1 - x)^(b - 1).
 
-    Either a and b, both > 0, or mean and size: a = mean * size, b = (1 - mean) * size, where size = a + b
-    counts like a number of earlier observations.
+    Either a and b, or mean and size. a, b: exponents, > 0. mean: expectation, a / (a + b), between 0 and 1.
+    size: a + b, > 0; it counts like a number of earlier observations.
     """
 
     kind: ClassVar[str] = "beta"

@@ -14,7 +14,10 @@ from bayesdesign.prior.base import Distribution
 @final
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Point(Distribution):
-    """Point mass: the number is exactly value. It has no density."""
+    """Point mass: the number is exactly value. It has no density.
+
+    value: the number itself.
+    """
 
     kind: ClassVar[str] = "point"
     value: float

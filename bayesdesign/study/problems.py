@@ -86,7 +86,7 @@ def faults_of(section: str, problem: Problem, words: Mapping[str, str]) -> list[
 
 
 def place(section: str, path: Iterable[int | str], *, keep_last: bool = False) -> str:
-    """`[section] key.key[i].key`, without the names of branches; `keep_last` spares the last part as it is."""
+    """`[section] key.key[i].key`, without the names of branches; `keep_last` spares the last part."""
     parts = list(path)
     text = ""
     for i, part in enumerate(parts):
@@ -134,8 +134,11 @@ def _not_a_belief(where: str, value: Any) -> Fault:
     kinds = [cls.kind for cls in DISTRIBUTIONS]
     if not isinstance(value, dict):
         hint = ", without quotes" if isinstance(value, str) else ""
-        return Fault(where=where, problem="neither a number nor a distribution", got=shown(value),
-                     allowed=f'a number{hint}, or a table like {{distribution = "normal", mean = 0, sd = 1}}')  # fmt: skip
+        example = '{distribution = "normal", mean = 0, sd = 1}'
+        allowed = f"a number{hint}, or a table like {example}"
+        return Fault(
+            where=where, problem="neither a number nor a distribution", got=shown(value), allowed=allowed
+        )
     if "distribution" not in value:
         return Fault(where=f"{where}.distribution", problem="missing", allowed=f"one of: {', '.join(kinds)}")
     return unknown(

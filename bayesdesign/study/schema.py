@@ -54,7 +54,7 @@ Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 End = Annotated[
     float, Field(strict=True)
 ]  # of a truncated range: one may be infinite, and Truncated refuses NaN
-Whole = Annotated[int, Field(strict=True, ge=-LARGEST_WHOLE, le=LARGEST_WHOLE)]
+Whole = Annotated[int, Field(strict=True, le=LARGEST_WHOLE)]
 Text = Annotated[str, Field(strict=True)]
 SCALARS = {float: Number, int: Whole, str: Text, bool: Annotated[bool, Field(strict=True)]}
 
@@ -129,8 +129,8 @@ def json_schema() -> dict[str, Any]:
     """
     every = frozenset(DISTRIBUTION_OF)
     choices: dict[str, Any] = {
-        "design": _either([section_model("design", tag, every) for tag in FAMILY_OF]),
-        "rule": _either([section_model("rule", tag, every) for tag in RULE_OF]),
+        "design": _choice("family", [section_model("design", tag, every) for tag in FAMILY_OF]),
+        "rule": _choice("type", [section_model("rule", tag, every) for tag in RULE_OF]),
     }
     keys: Keys = {
         name: (
@@ -155,7 +155,7 @@ class _Untitled(GenerateJsonSchema):
         return False
 
 
-@functools.cache
+@functools.lru_cache(maxsize=64)
 def section_model(section: str, tag: str, kinds: frozenset[str]) -> type[Table]:
     """The model of a section that can read the given kinds of distributions."""
     belief = _belief(kinds)
@@ -198,7 +198,7 @@ def _tag_key(section: str, key: str, tag: str) -> tuple[Any, Any]:
 
 
 def _key(words: str, default: Any) -> Any:
-    """A key with its description. Without a default it is required; None and "" mean that it may be absent."""
+    """A key with its description. Without a default it is required; with None or "" it may be absent."""
     about = words or None
     if default is dataclasses.MISSING:
         return Field(description=about)
@@ -210,6 +210,11 @@ def _key(words: str, default: Any) -> Any:
 def _either(annotations: Sequence[Any]) -> Any:
     """The union of annotations that are only known at run time."""
     return functools.reduce(operator.or_, annotations)
+
+
+def _choice(key: str, models: Sequence[Any]) -> Any:
+    """One of the models, told apart by the key; a single one needs no telling."""
+    return Annotated[_either(models), Field(discriminator=key)] if len(models) > 1 else models[0]
 
 
 def _model(name: str, about: str, keys: Keys) -> type[Table]:
@@ -242,7 +247,8 @@ def _in_file(annotation: Any, belief: Any) -> Any:
     if annotation in SCALARS:
         return SCALARS[annotation]
     if get_origin(annotation) is tuple:  # TOML has lists only
-        return Annotated[list[_in_file(get_args(annotation)[0], belief)], AfterValidator(tuple)]  # type: ignore[misc]
+        element: Any = _in_file(get_args(annotation)[0], belief)
+        return Annotated[list[element], AfterValidator(tuple)]
     if get_origin(annotation) in (Union, types.UnionType):
         parts = [_in_file(part, belief) for part in get_args(annotation) if part is not type(None)]
         if Distribution in get_args(annotation) and len(parts) == 2:  # or one of some words
@@ -257,13 +263,13 @@ def _in_file(annotation: Any, belief: Any) -> Any:
     return annotation
 
 
-@functools.cache
+@functools.lru_cache(maxsize=64)
 def _belief(kinds: frozenset[str]) -> Any:
     """A number, or a table of one of these kinds; validation gives the distribution."""
     tables = {kind: _distribution(kind) for kind in sorted(kinds)}
     tagged = [Annotated[table, AfterValidator(_build), Tag(TAG + kind)] for kind, table in tables.items()]
     number = Annotated[Number, AfterValidator(lambda value: Point(value=value)), Tag(f"{TAG}number")]
-    whole = Annotated[_either([number, *tagged]), Discriminator(_tag_of)]
+    whole: Any = Annotated[_either([number, *tagged]), Discriminator(_tag_of)]
     for table in tables.values():  # a mixture holds what it is one of
         table.model_rebuild(_types_namespace={"Belief": whole})
     return whole

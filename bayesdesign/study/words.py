@@ -27,7 +27,7 @@ KEYS = {
     "effect": {
         "null": "the value to compare with; 0, or 1 for ratios, unless the family needs another",
         "favourable": 'which direction is good news: "higher", "lower" or "either"',
-        "smallest_relevant": "the least distance from the null that matters, > 0 (on ratio scales a ratio > 1)",
+        "smallest_relevant": "the least distance from the null that matters, > 0 (for ratios, a ratio > 1)",
         "planning_value": "the one effect a classical power calculation would use",
         "unit": "the unit of the effect, in words",
     },

@@ -38,7 +38,7 @@ def share(n=42, belief=None, *, analysis="exact", sides="two", alpha=0.05, null=
     )
 
 
-def shares(control=None, *, scale="difference", belief=None, n=300, analysis="z", spike=0.0):
+def shares(control=None, *, scale="difference", belief=None, n=40, analysis="z", spike=0.0):
     return Study(
         title="shares",
         design=TwoProportions(n_per_group=n, control=control or Beta(a=40.0, b=60.0), scale=scale, analysis=analysis),

@@ -1,0 +1,1 @@
+"""Published and closed-form figures of the literature that the program must reproduce."""

@@ -1,0 +1,1 @@
+"""Independent computations beside the program: closed forms, enumeration, quadrature, arbitrary precision."""

@@ -1,0 +1,1 @@
+"""Laws that every study must obey, over random studies."""

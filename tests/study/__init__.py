@@ -1,0 +1,1 @@
+"""Tests of the edge: files in, studies or faults out."""
