@@ -117,6 +117,16 @@ class Size(click.ParamType[int]):
             self.fail(f"{value!r} is not a whole number; several sizes are given as --n 40 80", param, ctx)
 
 
+class Share(click.FloatRange):
+    """A number in a range, which NaN is not, although it compares as no number does."""
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> Any:
+        found = super().convert(value, param, ctx)
+        if found != found:
+            self.fail(f"{value!r} is not a number", param, ctx)
+        return found
+
+
 def _options(*, computes: bool) -> Callable[[Callable[..., Any]], Callable[..., Any]]:
     """The common options, handed to the command as one `Options`."""
     shown = [
@@ -152,7 +162,7 @@ def _options(*, computes: bool) -> Callable[[Callable[..., Any]], Callable[..., 
             ),
             click.option(
                 "--tolerance",
-                type=click.FloatRange(0, 1, min_open=True),
+                type=Share(0, 1, min_open=True),
                 default=1e-6,
                 show_default=True,
                 help="Integration error beyond which a number is refused.",
@@ -262,12 +272,12 @@ def size(*, study: str, options: Options) -> Output:
 @click.option(
     "--se", type=float, metavar="S", help="Its standard error (of the logarithm, on a ratio scale)."
 )
-@click.option("--p-value", type=float, metavar="P", help="Only the p-value of the study's test is known.")
+@click.option("--p-value", metavar="P", help="Only the p-value of the study's test is known.")
 @click.option("--data", metavar="FILE.csv", help="The study's data.")
 @click.option("--n", "n", type=Size(), metavar="N", help="The size the study had; default the planned one.")
 @click.option(
     "--mass",
-    type=click.FloatRange(0, 1, min_open=True, max_open=True),
+    type=Share(0, 1, min_open=True, max_open=True),
     default=0.95,
     show_default=True,
     help="Probability inside the reported interval.",
@@ -282,7 +292,7 @@ def interpret(*, study: str, options: Options, data: str | None, **known: Any) -
     with options.working("computing"):
         from bayesdesign.interpret import interpret as compute
 
-        found = compute(read, **known, route=options.route)
+        found = compute(read, **known, **options.computing)
     if options.as_json:
         return _json(found.to_dict(), options)
     from bayesdesign.render.after import interpretation_text

@@ -5,8 +5,8 @@ from typing import Any, Literal
 
 from bayesdesign.design import Design, Estimate, OneProportion, TwoMeans
 from bayesdesign.evaluate import evaluate
-from bayesdesign.interpret import interpret
-from bayesdesign.joint.posterior import Posterior
+from bayesdesign.joint.evidence import p_value_evidence
+from bayesdesign.joint.posterior import Posterior, posterior_by_integration
 from bayesdesign.prior import Distribution, Point
 from bayesdesign.result import Answer
 from bayesdesign.rule import Significance
@@ -72,6 +72,6 @@ def count_study(x: int, n: int, null: float, prior: Distribution, *, spike: floa
 
 
 def after_count(x: int, n: int, null: float, prior: Distribution, *, spike: float = 0.0, mass: float = 0.95) -> Posterior:
-    """The posterior after x of n, by `interpret` with the p-value alone."""
+    """The posterior after x of n, as `interpret` finds it from the p-value alone."""
     made, p = count_study(x, n, null, prior, spike=spike)
-    return interpret(made, p_value=repr(p), mass=mass).posterior
+    return posterior_by_integration(made, n, p_value_evidence(made, n, p, 17, None), mass, 1e-6)

@@ -17,8 +17,8 @@ def jackknife(whole: Ratio, without: Ratio, count: FloatArray, scale: FloatArray
     """Standard error of a ratio of sums, leading axis N.
 
     whole: (N, 1), from all draws; without: (N, B), each without one batch (delete-a-group jackknife,
-    Quenouille 1956; Tukey 1958). count (N,): draws under the ratio's condition; scale: the size of what one draw
-    contributes, 1 for a rate.
+    Quenouille 1956; Tukey 1958). count (N,): draws under the ratio's condition; scale: the size of what one
+    draw contributes, 1 for a rate.
     """
     left = without.value
     centre = np.where(np.isfinite(left), left - whole.value, 0.0)
@@ -61,11 +61,11 @@ def power_quantile(successes: BoolArray, level: float) -> tuple[float, float]:
     """Quantile of the probability p over truths and its standard error; successes (truths, 2, studies / 2).
 
     The share of successes is p plus binomial noise, which spreads the quantiles outwards: by c / studies
-    where p has a smooth density, by c / sqrt(studies) where it has an atom. The quantile from all studies and the
-    mean of those from either half give an estimate of that bias (Richardson extrapolation); it is subtracted
-    once, which leaves nothing to first order in the smooth case and 0.6 of the bias at an atom. The error
-    holds the order statistics of the truths, 1.5 times the subtracted bias (so that it covers an atom), and the
-    resolution of the shares.
+    where p has a smooth density, by c / sqrt(studies) where it has an atom. The quantile from all studies
+    and the mean of those from either half give an estimate of that bias (Richardson extrapolation); it is
+    subtracted once, which leaves nothing to first order in the smooth case and 0.6 of the bias at an atom.
+    The error holds the order statistics of the truths, 1.5 times the subtracted bias (so that it covers an
+    atom), and the resolution of the shares.
     """
     inner = successes.shape[1] * successes.shape[2]
     halves = np.sort(successes.mean(axis=2), axis=0)

@@ -235,7 +235,7 @@ def _mcse(per_draw: FloatArray) -> float:
 
 
 def _weighted_quantile(effects: FloatArray, share: FloatArray, level: float) -> Estimated:
-    """Quantile of the draws, each part with its share; error by that of the share below it (Woodruff 1952)."""
+    """Quantile of the draws, each part with its share; error by that of the share below (Woodruff 1952)."""
     order = np.argsort(effects, axis=None, kind="stable")
     values, cumulative = effects.ravel()[order], np.cumsum(share.ravel()[order])
     cumulative /= cumulative[-1]

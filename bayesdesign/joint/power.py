@@ -19,6 +19,8 @@ def power_quantiles(setting: "Setting", levels: tuple[float, ...]) -> FloatArray
     Power is interpolated linearly in prior probability between the quantiles of the prior, at each nuisance node. The levels
     themselves are among the grid points, so that the answer is exact where power is monotone and no nuisance is uncertain.
     """
+    from bayesdesign.joint.integration import distances
+
     study = setting.study
     favourable = study.rule.favourable(study.favourable)
     regions = [setting.regions[i] for i, name in enumerate(study.rule.decisions[:-1]) if name in favourable]
@@ -35,7 +37,9 @@ def power_quantiles(setting: "Setting", levels: tuple[float, ...]) -> FloatArray
         power = np.zeros(effect.shape)
     mass = setting.nuisance_weight * (last - first)
     cells = (mass / mass.sum())[:, None] * np.diff(grid)
-    return np.array([_quantiles(row, cells, np.asarray(levels)) for row in power])
+    at_null = distances(study, effect)[1]
+    real = np.where(at_null[..., 1:] & at_null[..., :-1], 0.0, cells)  # without an atom exactly at the null
+    return np.array([_quantiles(p, c if c.any() else cells, np.asarray(levels)) for p, c in zip(power, real, strict=True)])
 
 
 def _grid(setting: "Setting", levels: tuple[float, ...]) -> FloatArray:

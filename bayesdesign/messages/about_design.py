@@ -161,7 +161,7 @@ DESIGN_TRAPS = (
         code="level-exceeded",
         severity="warning",
         condition=_level_exceeded,
-        text="With these counts the test claims an effect {actual} of the time when there is none, more "
+        text="With these counts the test claims an effect {actual} of the time where the null holds, more "
         "than its nominal {alpha}.",
         advice='Use analysis = "exact", or lower alpha.',
     ),
@@ -169,8 +169,8 @@ DESIGN_TRAPS = (
         code="level-unspent",
         severity="info",
         condition=_level_unspent,
-        text="Counts are whole numbers, so the test spends only {actual} of its level of {alpha} when there "
-        "is no effect; power is lost with it.",
+        text="Counts are whole numbers, so the test spends only {actual} of its level of {alpha} where the "
+        "null holds; power is lost with it.",
         advice="Look at neighbouring n, where more of the level may be spent.",
     ),
     Trap(

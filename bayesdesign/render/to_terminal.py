@@ -25,7 +25,7 @@ CURVE = {
 def result_text(result: "Result", *, colour: bool = False) -> str:
     """The answer of `evaluate` or `size`."""
     page, study = Page(), result.study
-    _title(page, study, result.answers)
+    title(page, study, result.answers)
     if result.size is not None:
         _size(page, result)
     if len(result.answers) == 1:
@@ -44,7 +44,7 @@ def check_text(
 ) -> str:
     """The answer of `check`: the study in plain words."""
     page = Page()
-    _title(page, study, ())
+    title(page, study, (), question=False)
     for sentence in says:
         page.paragraph(safe(sentence, 2000), hang=2, first="·")
     page.gap()
@@ -53,13 +53,14 @@ def check_text(
     return page.text(colour=colour)
 
 
-def _title(page: Page, study: "Study", answers: Sequence["Answer"]) -> None:
+def title(page: Page, study: "Study", answers: Sequence["Answer"], *, question: bool = True) -> None:
+    """The study's name and size over a rule."""
     size = ""
     if len(answers) == 1 and answers[0].sizes:
         size = ", ".join(f"{words.label(name)} {n}" for name, n in answers[0].sizes.items())
     name = safe(study.title, WIDTH - width(size) - 3)
     page.line(pad(name, WIDTH - width(size)) + size, "title")
-    if study.question:
+    if study.question and question:
         page.line(safe(study.question, WIDTH))
     page.line("─" * WIDTH, "faint")
 
@@ -276,10 +277,15 @@ def _foot(
     page: Page, study: "Study", messages: Sequence["Message"], provenance: dict[str, Any], routes: str
 ) -> None:
     foot_messages(page, messages)
+    caution(page, study)
+    provenance_line(page, study.sha256, provenance, routes)
+
+
+def caution(page: Page, study: "Study") -> None:
+    """Where a result can hurt someone, who has the last word."""
     if study.field in words.CAUTION:
         page.gap()
         page.paragraph(words.CAUTION[study.field])
-    provenance_line(page, study.sha256, provenance, routes)
 
 
 def provenance_line(page: Page, sha256: str, provenance: dict[str, Any], routes: str) -> None:

@@ -84,7 +84,7 @@ def _design(study: Study) -> list[str]:
     said = [f"Design {', '.join(filter(None, known))}."]
     for name, belief in design.nuisance.items():
         if isinstance(belief, Point):
-            said.append(f"The {_label(name)} is taken as known: {_figure(belief.value)}.")
+            said.append(f"The {_label(name)} is taken to be exactly {_figure(belief.value)}.")
         else:
             said.append(f"The {_label(name)} is uncertain: {belief.describe()}; {_quantiles(belief)}.")
     return said
@@ -97,7 +97,7 @@ def _quantiles(belief: Distribution, unit: str = "") -> str:
 
 
 def _spread(low: float, middle: float, high: float, unit: str) -> str:
-    text = f"5 % below {_figure(low)}, half below {_figure(middle)}, 95 % below {_figure(high)}"
+    text = f"5% below {_figure(low)}, half below {_figure(middle)}, 95% below {_figure(high)}"
     return f"{text} ({unit})" if unit else text
 
 

@@ -147,7 +147,7 @@ def _support_faults(where: str, belief: Distribution, low: float, high: float) -
 
 
 def _node_faults(where: str, belief: Distribution) -> list[Fault]:
-    """A distribution of which floating point numbers leave nothing to integrate over, e.g. with a scale of 1e-320."""
+    """A distribution of which rounding leaves nothing to integrate over, e.g. with a scale of 1e-320."""
     try:
         nodes = nuisance_nodes({where: belief}, 8)[0][where]
     except (ValueError, ArithmeticError, np.linalg.LinAlgError):
@@ -172,7 +172,7 @@ def _outside(belief: Distribution, low: FloatArray, high: FloatArray) -> FloatAr
 
 
 def _variable_faults(study: "Study") -> list[Fault]:
-    """The prior on the effect (or the treated arm) must lie on possible values, given the nuisance parameters."""
+    """The prior on the effect (or the treated arm) must lie on values that the nuisance allows."""
     prior, design = study.prior, study.design
     nodes, weight = nuisance_nodes(design.nuisance, 8)
     low, high = design.effect_bounds(nodes)
@@ -204,7 +204,8 @@ def _variable_faults(study: "Study") -> list[Fault]:
             where=where,
             problem=f"{lost:.2g} of its probability lies on impossible values",
             got=prior.variable.describe(),
-            allowed=f"possible values are {example}; choose another distribution, or add truncated = [low, high]",
+            allowed=f"possible values are {example}; "
+            "choose another distribution, or add truncated = [low, high]",
         )
     ]
 

@@ -103,9 +103,7 @@ ODDS = Study(
 CUT = Study(
     title="impossible pairs cut off",
     design=TwoProportions(n_per_group=60, control=Beta(a=3.0, b=9.0), analysis="z_unpooled"),
-    prior=Prior(
-        effect=Truncated(base=Normal(mean=-0.1, sd=0.2), low=-0.5, high=0.5), probability_null=0.3
-    ),
+    prior=Prior(effect=Truncated(base=Normal(mean=-0.1, sd=0.2), low=-0.5, high=0.5), probability_null=0.3),
     rule=Significance(),
     effect=Effect(favourable="lower"),
 )

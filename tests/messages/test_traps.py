@@ -1,6 +1,7 @@
 """Each trap fires on a study that has run into it and stays silent on one that has not."""
 
 from dataclasses import replace
+from functools import cache
 
 import pytest
 
@@ -20,7 +21,7 @@ def means(n=200, sd=5.0, belief=None, *, alpha=0.05, sides="two", spike=0.0, tar
     effect = {"favourable": "higher", "smallest_relevant": 1.0, "unit": "kg"} | effect
     return Study(
         title="means",
-        design=TwoMeans(n_per_group=n, sd=sd),
+        design=TwoMeans(n_per_group=n, sd=sd, analysis="z"),
         prior=Prior(effect=belief or Normal(mean=2.0, sd=1.0), probability_null=spike),
         rule=Significance(alpha=alpha, sides=sides),
         effect=Effect(**effect),
@@ -38,10 +39,12 @@ def share(n=42, belief=None, *, analysis="exact", sides="two", alpha=0.05, null=
     )
 
 
-def shares(control=None, *, scale="difference", belief=None, n=40, analysis="z", spike=0.0):
+def shares(control=None, *, scale="difference", belief=None, n=300, analysis="z", spike=0.0):
     return Study(
         title="shares",
-        design=TwoProportions(n_per_group=n, control=control or Beta(a=40.0, b=60.0), scale=scale, analysis=analysis),
+        design=TwoProportions(
+            n_per_group=n, control=control or Beta(a=40.0, b=60.0), scale=scale, analysis=analysis
+        ),
         prior=Prior(effect=belief or Normal(mean=0.1, sd=0.05), probability_null=spike),
         rule=Significance(),
         effect=Effect(favourable="higher"),
@@ -67,7 +70,10 @@ CASES = {
     "sign-flip": (means(belief=Normal(mean=-2.0, sd=1.0)), means()),
     "prior-mass-at-null": (means(smallest_relevant=None), means()),
     "prior-too-wide": (means(belief=Normal(mean=2.0, sd=10.0)), means()),
-    "prior-too-narrow": (means(n=30, belief=Normal(mean=2.0, sd=0.02)), means(n=30)),
+    "prior-too-narrow": (
+        means(n=30, sd=6.0, belief=Normal(mean=2.0, sd=0.02), smallest_relevant=None),
+        means(n=30),
+    ),
     "spike-by-default": (means(spike=0.5, smallest_relevant=None), means(spike=0.4, smallest_relevant=None)),
     "vague-slab": (means(belief=Normal(mean=0.0, sd=200.0), spike=0.3), means(spike=0.3)),
     "ratio-on-linear": (estimate(1.0, Normal(mean=1.3, sd=0.1)), estimate(0.0, Normal(mean=1.3, sd=0.1))),
@@ -86,13 +92,13 @@ CASES = {
     "saw-tooth": (share(n=40, sides="higher"), means()),
     "approx-range": (share(n=10, belief=Beta(a=3.0, b=27.0), analysis="z", null=0.05), share(analysis="z")),
     "zero-events": (share(n=10, belief=Beta(a=3.0, b=27.0), null=0.05), share()),
-    "level-exceeded": (share(n=10, belief=Beta(a=3.0, b=27.0), analysis="z", null=0.02), share()),
+    "level-exceeded": (share(n=10, belief=Beta(a=3.0, b=27.0), analysis="z", null=0.05), share()),
     "level-unspent": (share(n=10, null=0.2), share(n=400)),
     "zone-below-resolution": (means(n=20), means()),
     "ceiling-below-target": (means(target=Target(at_least=0.99)), means(target=Target(at_least=0.9))),
     "decision-never": (share(n=3, alpha=0.01), share()),
     "rule-against-favourable": (means(sides="lower"), means(sides="higher", alpha=0.025)),
-    "decision-always": (means(n=5000, belief=Normal(mean=4.0, sd=0.2)), means()),
+    "decision-always": (means(n=5000, belief=Normal(mean=4.0, sd=0.2), smallest_relevant=None), means()),
     "planning-value-optimistic": (means(n=60, planning_value=3.0), means(planning_value=1.5)),
     "assurance-vs-power": (means(planning_value=0.7), means(planning_value=2.0)),
     "weak-study": (means(n=20), means()),
@@ -104,23 +110,36 @@ CASES = {
 }
 
 
-def codes(study):
-    return [message.code for message in messages_for(study, evaluate(study, tolerance=1e-4).answers)]
+@cache
+def answers_of(study):
+    return evaluate(study, tolerance=1e-2).answers  # the sentences need two digits
+
+
+BY_STUDY_ALONE = (
+    "symmetric-prior-on-ratio",
+    "prior-cut",
+    "base-rate-fixed",
+)  # costly to evaluate, and needless
+
+
+def codes(code, study):
+    answers = [] if code in BY_STUDY_ALONE else answers_of(study)
+    return [message.code for message in messages_for(study, answers)]
 
 
 @pytest.mark.parametrize("code", CASES)
 def test_fires(code):
-    assert code in codes(CASES[code][0])
+    assert code in codes(code, CASES[code][0])
 
 
 @pytest.mark.parametrize("code", CASES)
 def test_stays_silent(code):
-    assert code not in codes(CASES[code][1])
+    assert code not in codes(code, CASES[code][1])
 
 
 def with_sampling_error(error):
     study = means(target=Target(at_least=0.9))
-    answer = evaluate(study).answers[0]
+    answer = answers_of(study)[0]
     drawn = Quantity(value=0.89, error=error, route="sampling")
     return messages_for(study, [replace(answer, quantities=answer.quantities | {"assurance": drawn})])
 
@@ -137,9 +156,9 @@ def test_every_trap_is_tested_and_named_once():
 
 
 def test_order_and_completeness_of_words():
-    for pair in CASES.values():
+    for code, pair in CASES.items():
         for study in pair:
-            messages = messages_for(study, evaluate(study, tolerance=1e-4).answers)
+            messages = messages_for(study, [] if code in BY_STUDY_ALONE else answers_of(study))
             severities = [ORDER.index(m.severity) for m in messages]
             assert severities == sorted(severities)
             for m in messages:
@@ -158,12 +177,12 @@ def test_hostile_unit_is_no_template():
 
 def test_without_answers_only_the_study_speaks():
     study = means(sides="higher", n=20, target=Target(at_least=0.99))
-    assert set(m.code for m in messages_for(study, [])) == {"zone-below-resolution", "tail-mixup"}
+    assert {m.code for m in messages_for(study, [])} == {"zone-below-resolution", "tail-mixup"}
 
 
 def test_saw_tooth_among_the_sizes_asked_for():
     study = share(n=40, sides="higher")
-    messages = messages_for(study, evaluate(study, [40, 41]).answers)
+    messages = messages_for(study, evaluate(study, [39, 40]).answers)
     text = next(m.text for m in messages if m.code == "saw-tooth")
     assert text.startswith("Counts make the curve a saw: assurance is 0.")
 
@@ -175,14 +194,18 @@ def test_power_helper_agrees_with_the_table():
         prior=Prior(effect=Point(value=2.0)),
         rule=Significance(),
     )
-    answers = evaluate(study).answers
-    assert Context(study, answers).power(2.0) == pytest.approx(answers[0].quantities["average_power"].value, abs=1e-6)
+    answers = answers_of(study)
+    assert Context(study, answers).power(2.0) == pytest.approx(
+        answers[0].quantities["average_power"].value, abs=1e-6
+    )
 
 
 def test_power_helper_averages_nuisance():
     study = means(n=30, belief=Point(value=2.0), favourable="either")
-    answers = evaluate(study).answers
-    assert Context(study, answers).power(2.0) == pytest.approx(answers[0].quantities["assurance"].value, abs=1e-4)
+    answers = answers_of(study)
+    assert Context(study, answers).power(2.0) == pytest.approx(
+        answers[0].quantities["assurance"].value, abs=1e-4
+    )
 
 
 def test_prior_quantile_of_two_arms():

@@ -22,7 +22,7 @@ SHARES = {
 
 
 def written(base: dict[str, dict[str, str]] = GOOD, **changes: str | None) -> str:
-    """The file with keys replaced (`design__sd="3"`), added, or taken out (None); `design=None` takes out a section."""
+    """The file with keys replaced (`design__sd="3"`), added, or taken out (None), or without a section."""
     tables = {name: dict(table) for name, table in base.items()}
     for name, value in changes.items():
         section, _, key = name.partition("__")

@@ -1,11 +1,14 @@
-"""Each wrong file is answered with exactly one line for each fault, that says where, what came and what is allowed."""
+"""Each wrong file is answered with one line for each fault: where, what came, what is allowed."""
 
 import pytest
 
 from tests.study.files import SHARES, lines, written
 
 NUMBER_OR_TABLE = 'a number{}, or a table like {{distribution = "normal", mean = 0, sd = 1}}'
-KINDS = "normal, student_t, cauchy, gamma, lognormal, half_normal, exponential, uniform, beta, histogram, point, mixture"
+KINDS = (
+    "normal, student_t, cauchy, gamma, lognormal, half_normal, exponential, uniform, beta, histogram, "
+    "point, mixture"
+)
 
 
 def normal(**keys: str) -> str:
@@ -137,7 +140,10 @@ DISTRIBUTIONS = [
     ),
     (
         normal(distribution='"Normal"'),
-        f'[prior] effect.distribution: unknown distribution (got "Normal"); did you mean normal? allowed: {KINDS}',
+        (
+            f'[prior] effect.distribution: unknown distribution (got "Normal"); '
+            f"did you mean normal? allowed: {KINDS}"
+        ),
     ),
     (
         normal(truncated="[3, 2]"),
@@ -174,7 +180,7 @@ DISTRIBUTIONS = [
     ),
     (
         table("mixture", f"components = [{normal(distribution=chr(34) + 'norml' + chr(34))}], weights = [1]"),
-        '[prior] effect.components[0].distribution: unknown distribution (got "norml"); did you mean normal? ',
+        '[prior] effect.components[0].distribution: unknown distribution (got "norml"); did you mean ',
     ),
     (
         table("mixture", 'components = [1], weights = ["1"]'),
@@ -187,6 +193,13 @@ TOGETHER = [
     (
         {"design__sd": normal()},
         "[design] sd: 0.12 of its probability lies on impossible values (got normal, mean 1.8, sd 1.5); ",
+    ),
+    (
+        {"design__sd": '{distribution = "half_normal", scale = 5e-324}'},
+        (
+            "[design] sd: too extreme to compute with (got half-normal, scale 4.94066e-324); "
+            "numbers of an ordinary size"
+        ),
     ),
     ({"design__sd": None}, "[design] sd: sds do not fit; give sd, or sd_treatment and sd_control"),
     (
@@ -295,7 +308,10 @@ def test_faults_of_all_sections_and_kinds_come_together_in_order() -> None:
         "[design] sd.components[1].mean: not a number (got true); a number",
         "[prior] effect.sd: value not allowed (got 0); a finite number > 0",
         "[rule] alpha: value not allowed (got 2); a number between 0 and 1",
-        "[target] at_leest: unknown key (got 0.8); did you mean at_least? allowed: measure, at_least, at_most, max_n",
+        (
+            "[target] at_leest: unknown key (got 0.8); did you mean at_least? "
+            "allowed: measure, at_least, at_most, max_n"
+        ),
     ]
 
 
