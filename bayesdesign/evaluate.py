@@ -21,6 +21,7 @@ SEED = 20260101
 DRAWS = 1_000_000
 TOLERANCE = 1e-6
 BY_SEARCH = ("exaggeration_median", "power_quantiles")  # no ratios of sums; withheld one by one instead of refusing the run
+RARE = 1e-4  # a number under a condition less likely than this is withheld on its own, too
 COARSE = 5e-3  # relative error beyond which one of those is withheld
 DISAGREEMENT = 5.0  # standard errors between the routes beyond which both numbers are refused
 
@@ -61,7 +62,7 @@ def evaluate(
         if exact is not None:
             check_tolerance(exact, tolerance)
         drawn = _sampled(study, block, seed, draws) if route != "integration" else None
-        answers += _answers(study, block, exact, drawn)
+        answers += _answers(study, block, exact, drawn, tolerance)
         tables.append((exact or _given(drawn)).joint)
     check_agreement(answers)
     from bayesdesign.messages import messages_for
@@ -107,7 +108,8 @@ def check_tolerance(numbers: Numbers, tolerance: float) -> None:
         if name in BY_SEARCH:
             continue
         value = np.nan_to_num(number.value, posinf=0.0)
-        excess = np.where(np.isfinite(number.value), number.error, 0.0) / np.maximum(1.0, np.abs(value))
+        counts = np.isfinite(number.value) & (np.asarray(number.weight) >= RARE)
+        excess = np.where(counts, number.error, 0.0) / np.maximum(1.0, np.abs(value))
         if np.max(excess) > tolerance:
             raise Refused(
                 f"{name}: integration error {np.max(excess):.2g} exceeds the tolerance {tolerance:.2g}",
@@ -127,14 +129,16 @@ def check_agreement(answers: Sequence[Answer]) -> None:
                 )
 
 
-def _answers(study: Study, block: list[int | None], exact: Numbers | None, drawn: Numbers | None) -> list[Answer]:
+def _answers(
+    study: Study, block: list[int | None], exact: Numbers | None, drawn: Numbers | None, tolerance: float
+) -> list[Answer]:
     shown = _given(exact or drawn)
     route = "integration" if exact is not None else "sampling"
     return [
         Answer(
             n=n,
             sizes=study.design.group_sizes(n) if n is not None else {},
-            quantities={name: quantity(number, i, route) for name, number in ordered(shown.by_name).items()},
+            quantities={name: quantity(number, i, route, tolerance) for name, number in ordered(shown.by_name).items()},
             table=decision_table(study, shown.cells[i]),
             cross_check=_comparisons(exact, drawn, i) if exact is not None and drawn is not None else {},
         )
@@ -154,9 +158,13 @@ def ordered(by_name: dict[str, Number]) -> dict[str, Number]:
     return {name: by_name[name] for name in ORDER if name in by_name}
 
 
-def quantity(number: Number, i: int, route: str) -> Quantity:
+def quantity(number: Number, i: int, route: str, tolerance: float) -> Quantity:
     """The number at the i-th size; what is not finite becomes None with its reason."""
     value, error = number.value[i], number.error[i]
+    rare = route == "integration" and np.ndim(value) == 0 and bool(np.broadcast_to(number.weight, number.value.shape)[i] < RARE)
+    if rare and np.isfinite(value) and error > tolerance * max(1.0, abs(value)):
+        why = f"its condition is so unlikely that the integration error {error:.2g} exceeds the tolerance"
+        return Quantity(value=None, error=None, route=route, why_null=why)
     if route == "integration" and np.max(error) > COARSE * max(1.0, float(np.max(np.abs(value)))):
         why = f"its integration error {np.max(error):.2g} is too large (outcomes are counts); use --route sampling"
         return Quantity(value=None, error=None, route=route, why_null=why)
@@ -191,10 +199,11 @@ def _comparisons(exact: Numbers, drawn: Numbers, i: int) -> dict[str, Comparison
         other = drawn.by_name.get(name)
         if other is None:
             continue
-        pairs = [(name, number.value[i], other.value[i], other.error[i])]
+        both = np.hypot(number.error[i], other.error[i])
+        pairs = [(name, number.value[i], other.value[i], both)]
         if np.ndim(number.value[i]):
             pairs = [
-                (f"{name}[{level:g}]", number.value[i, j], other.value[i, j], other.error[i, j])
+                (f"{name}[{level:g}]", number.value[i, j], other.value[i, j], both[j])
                 for j, level in enumerate(POWER_LEVELS)
             ]
         for label, one, two, error in pairs:

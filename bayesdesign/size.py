@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from bayesdesign.core.arrays import FloatArray
     from bayesdesign.study.study import Study, Target
 
+QUICK = 1e-5  # change between refinements that is enough where the target is far off
 CLEAR = 1e-9  # a measure this close below its target counts as meeting it
 PLANNING = ("power_at_planning_value", "type_s_at_planning_value", "exaggeration_at_planning_value")
 COSTLY_N = 1_000  # sizes beyond which a search that cannot succeed stops for designs with counts
@@ -84,7 +85,7 @@ def _search(study: "Study", target: "Target", ceiling: float | None, tolerance: 
 
     def margins(sizes: list[int]) -> list[float]:
         blocks = [sizes[i : i + step] for i in range(0, len(sizes), step)]
-        values = [_margin(target, measured(study, block, target.measure, tolerance)) for block in blocks]
+        values = [_margin(target, measured(study, block, target.measure, tolerance, _bound(target))) for block in blocks]
         return [float(m) for block in values for m in block]
 
     most = target.max_n
@@ -92,24 +93,26 @@ def _search(study: "Study", target: "Target", ceiling: float | None, tolerance: 
         return monotone_search(lambda sizes: [m >= 0 for m in margins(sizes)], least, most)
     hopeless = ceiling is not None and _margin(target, np.array(ceiling)) < 0
     return saw_tooth_search(
-        SawTooth(margins, least, min(most, max(COSTLY_N, least)) if hopeless else most, study.design.tooth)
+        SawTooth(margins, least, min(most, max(COSTLY_N, least)) if hopeless else most, lambda n: study.design.tooth(n, study.null))
     )
 
 
-def measured(study: "Study", n: Sequence[int], name: str, tolerance: float) -> "FloatArray":
-    """One measure at several n, by integration."""
-    if name in PLANNING:
-        fixed = at_planning_value(study)
-        if isinstance(fixed, str):
-            raise StudyError([Fault(where="[target] measure", problem="cannot be computed", got=name, allowed=fixed)], study.file)
-        return refine(fixed, n, lambda c, s: {name: planning_readings(c, s)[name]}, tolerance).numbers[name].value
+def measured(study: "Study", n: Sequence[int], name: str, tolerance: float, bound: float | None = None) -> "FloatArray":
+    """One measure at several n, by integration; no finer than it takes to tell on which side of `bound` it lies."""
     if name == "exaggeration_median":
         return integrated(study, n, tolerance).by_name[name].value
+    fixed, every = (at_planning_value(study), planning_readings) if name in PLANNING else (study, readings)
+    if isinstance(fixed, str):
+        raise StudyError([Fault(where="[target] measure", problem="cannot be computed", got=name, allowed=fixed)], study.file)
 
     def read(c: Cells, s: "Study") -> dict[str, Ratio]:
-        return {name: readings(c, s)[name]}
+        return {name: every(c, s)[name]}
 
-    return refine(study, n, read, tolerance).numbers[name].value
+    if bound is not None:
+        quick = refine(fixed, n, read, tolerance=1.0, goal=QUICK).numbers[name]
+        if not (np.abs(quick.value - bound) < 50 * np.maximum(quick.error, CLEAR)).any():
+            return quick.value
+    return refine(fixed, n, read, tolerance).numbers[name].value
 
 
 def limit_of(study: "Study", name: str) -> float | None:

@@ -138,7 +138,7 @@ def test_planted_violation_is_caught(tmp_path, file, line):
         ("joint/x.py", "def f():\n    import pymc as pm"),
         (
             "prior/x.py",
-            "from typing import TYPE_CHECKING\nif TYPE_CHECKING:\n    from bayesdesign.study.study import Study",
+            "import typing as t\nif t.TYPE_CHECKING:\n    from bayesdesign.study.study import Study",
         ),
     ],
 )
@@ -185,7 +185,8 @@ def run(code):
 @pytest.mark.parametrize("first", ["bayesdesign.evaluate", "bayesdesign.size", "bayesdesign.interpret"])
 def test_function_wins_over_the_module_of_its_name(first):
     name = first.split(".")[1]
-    code = f"import {first}, bayesdesign as bd; from {first} import {name} as f; print(callable(f), bd.{name} is f)"
+    code = f"import {first}, bayesdesign as bd; from {first} import {name} as f; "
+    code += f"print(callable(f), bd.{name} is f)"
     assert run(code) == "True True"
 
 

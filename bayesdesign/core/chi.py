@@ -12,6 +12,7 @@ from bayesdesign.core.arrays import FloatArray
 
 LAGUERRE_FROM_DF = 60.0  # above it u is so narrow that every integrand met here is nearly a polynomial in it
 ROUGH_FROM_DF = 10.0  # the same where absolute accuracy is enough, as for pairs of sds
+LEAST_EDGE = 1e-9  # a level of one half has its bound at 0, where u makes no edge at all
 OUTSIDE = 1e-26  # chi-square mass left out on either side of the panels
 
 
@@ -26,7 +27,7 @@ def sd_ratio_nodes(
     """
     threshold, more = (ROUGH_FROM_DF, 8) if rough else (LAGUERRE_FROM_DF, 16)
     parts = [
-        _laguerre(d, order + more) if d >= threshold else _panels(d, c, order)
+        _laguerre(d, order + more) if d >= threshold else _panels(d, max(abs(c), LEAST_EDGE), order)
         for d, c in zip(df, critical, strict=True)
     ]
     width = max(len(nodes) for nodes, _ in parts)

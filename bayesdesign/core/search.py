@@ -65,7 +65,7 @@ class Found:
 
 def monotone_search(meets: Meets, least: int, most: int) -> Found:
     """First and safe n where the measure is smooth in n: a geometric grid up to `most`, then bisection between grid points."""
-    grid = _grid(least, most, dense=16)
+    grid = _grid(least, most, dense=1)
     answers = meets(grid)
     if not any(answers):
         return Found(None, None, grid[-1])

@@ -135,7 +135,7 @@ class Design(abc.ABC):
     example: ClassVar[str]  # its [effect], [design] and [prior] in TOML; the comments describe the [design] keys wherever that is needed
     minimum_n: ClassVar[int] = 1
     saw_tooth: ClassVar[bool] = False  # power is not monotone in n, because outcomes are discrete
-    sizes_at_once: ClassVar[int] = 16  # how many n one `outcomes` call takes, to bound memory
+    sizes_at_once: ClassVar[int] = 4  # how many n one `outcomes` call takes, to bound memory
 
     @property
     @abc.abstractmethod
@@ -151,9 +151,9 @@ class Design(abc.ABC):
         """All sizes that follow from n, by their study-file key."""
         return {self.n_label: n}
 
-    def tooth(self, n: int) -> int:
-        """For designs with counts: a number of consecutive sizes around n that covers one up and down of the power."""
-        del n
+    def tooth(self, n: int, null: float) -> int:
+        """For designs with counts: a number of consecutive sizes around n that covers some ups and downs of the power."""
+        del n, null
         return 1
 
     @property

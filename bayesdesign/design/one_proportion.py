@@ -16,6 +16,7 @@ from bayesdesign.design.base import Accuracy, Analysis, Design, Outcomes, Side, 
 from bayesdesign.design.decided import Decides, LogLikelihood, log_binomial
 from bayesdesign.prior.base import Distribution
 
+STEPPED_TO = 1_000  # size up to which every jump of the median's search is given a panel of its own
 TIE = 1 + 1e-10  # a p-value equal to the level rejects, whatever the last bits say
 
 
@@ -61,9 +62,10 @@ effect = { distribution = "beta", mean = 0.38, size = 25 }
     def n_label(self) -> str:
         return "n"
 
-    def tooth(self, n: int) -> int:
-        # the critical count rises by one about every 1 / p sizes; the null is not known here, so a share of n stands for it
-        return max(60, n // 4)
+    def tooth(self, n: int, null: float) -> int:
+        # the critical count rises by one about every 1 / null sizes
+        del n
+        return max(32, int(4 / min(null, 1 - null)))
 
     @property
     def default_null(self) -> None:
@@ -147,7 +149,11 @@ class BinomialCount(Outcomes):
 
     @property
     def stepped(self) -> bool:
-        return True
+        return bool(self.n.max() <= STEPPED_TO)
+
+    @property
+    def rough_error(self) -> float:
+        return 0.0 if self.stepped else 1 / float(self.n.min())
 
     def null_outcome(self) -> FloatArray:
         return (self.n * self.null)[:, None, None]
@@ -173,7 +179,7 @@ class BinomialCount(Outcomes):
             share = np.clip(np.where(np.isinf(bound), np.nan, bound) / n, 0.0, 1.0)
             se = np.sqrt(np.maximum(share * (1 - share), 1 / n) / n)
             points.append(share + se * np.array([-7.0, -3.5, -1.2, 1.2, 3.5, 7.0]))
-        if multiple is not None:
+        if multiple is not None and self.stepped:
             counts = np.arange(self.n.max() + 1) / n
             steps = (np.where(counts <= 1, counts, self.null) - self.null) / multiple[:, None, None]
             points += [self.null + steps, self.null - steps]

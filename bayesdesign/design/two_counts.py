@@ -16,6 +16,7 @@ from bayesdesign.design.base import Outcomes, Side, Tails
 from bayesdesign.design.fisher import conditional_bounds
 
 STEPPED_TO = 60  # group size up to which every jump is given a panel of its own
+THINNED = 150  # control counts looked at for the median, at most about twice as many
 BLOCK = 2_000_000  # elements of one work array
 
 
@@ -84,22 +85,41 @@ class TwoCounts(Outcomes):
         low, high = _window(self.sizes[0], np.array([0.5]))
         return int(high[0] - low[0]) + len(self._y())
 
-    def _count_of(self, estimate: FloatArray) -> FloatArray:
+    def _count_of(self, estimate: FloatArray, y: FloatArray) -> FloatArray:
         """Real x whose estimate (with y on the last axis) is this; outside 0..n beyond the least or largest estimate."""
-        target = estimate + self.transform(self._y(), self.sizes[1])
+        target = estimate + self.transform(y, self.sizes[1])
         ends = self.transform(np.array([0.0, self.sizes[0]]), self.sizes[0])
         x = self.sizes[0] * self.inverse(target)
         return np.where(target < ends[0], -1.0, np.where(target > ends[1], self.sizes[0] + 1, x))
 
     def null_outcome(self) -> FloatArray:
-        return self._count_of(np.full((1, 1, 1), self.null))
+        return self._count_of(np.full((1, 1, 1), self.null), self._y())
 
     def outcomes_within(self, reach: FloatArray) -> tuple[FloatArray, FloatArray]:
+        return self._within(reach[..., None], self._y())
+
+    def _within(self, reach: FloatArray, y: FloatArray) -> tuple[FloatArray, FloatArray]:
         slack = 1e-9  # counts at exactly this distance are within it
-        return (
-            self._count_of((self.null - reach)[..., None]) - slack,
-            self._count_of((self.null + reach)[..., None]) + slack,
-        )
+        return self._count_of(self.null - reach, y) - slack, self._count_of(self.null + reach, y) + slack
+
+    def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
+        # only a probability is asked for, and of many control counts every k-th says enough: the sum over them is smooth
+        y = self._y()
+        picks = np.arange(0, len(y), max(1, len(y) // THINNED))
+        log_choose_y = log_choose_row(int(self.sizes[1]))[y[picks].astype(np.int64)]
+        total = np.zeros(effect.shape)
+        for m, control in enumerate(self.control):
+            pmf_y = _pmf(log_choose_y, y[picks], self.sizes[1], control)
+            keep = pmf_y > 1e-12 * pmf_y.max()
+            share = np.clip(self.treatment_of(effect[0, m], control), 0.0, 1.0)
+            tails = _CountTails.build(self.sizes[0], share, None)
+            low, high = self._within(reach[0, m][:, None], y[picks][keep])
+            for region in regions:
+                for lower, upper in zip(region.lower, region.upper, strict=True):
+                    ends = (np.broadcast_to(b[0, 0], y.shape)[picks][keep] for b in (lower, upper))
+                    mass, _ = tails.between(np.maximum(next(ends), low), np.minimum(next(ends), high))
+                    total[0, m] += mass @ pmf_y[keep] / pmf_y.sum()
+        return total
 
     def measure(self, effect: FloatArray, lower: FloatArray, upper: FloatArray) -> tuple[FloatArray, FloatArray]:
         shape = (len(lower), *effect.shape)
@@ -157,12 +177,18 @@ class _CountTails:
     above_moment: FloatArray
 
     @classmethod
-    def build(cls, n: float, share: FloatArray, transform: Callable[[FloatArray, float], FloatArray]) -> "_CountTails":
+    def build(
+        cls, n: float, share: FloatArray, transform: Callable[[FloatArray, float], FloatArray] | None
+    ) -> "_CountTails":
+        """Without `transform`, probabilities only: the moments are the probabilities again."""
         low, high = _window(n, share)
         width = int((high - low).max()) + 1
         start = np.minimum(low, n + 1 - width)[:, None]
         x = start + np.arange(width)
         pmf = _pmf(log_choose_row(int(n))[x.astype(np.int64)], x, n, share[:, None])
+        if transform is None:
+            below = _up(pmf)
+            return cls(start, below, below, below, below)
         value = pmf * transform(x, n)
         return cls(start, _up(pmf), _down(pmf), _up(value), _down(value))
 
@@ -176,10 +202,10 @@ class _CountTails:
             return np.take_along_axis(self.below, at, 1), np.take_along_axis(self.below_moment, at, 1)
         first = self._index(np.floor(lower) + 1)
         last = np.maximum(self._index(np.ceil(upper)), first)
-        return tuple(  # type: ignore[return-value]
-            np.take_along_axis(table, last, 1) - np.take_along_axis(table, first, 1)
-            for table in (self.below, self.below_moment)
-        )
+        mass = np.take_along_axis(self.below, last, 1) - np.take_along_axis(self.below, first, 1)
+        if self.below_moment is self.below:
+            return mass, mass
+        return mass, np.take_along_axis(self.below_moment, last, 1) - np.take_along_axis(self.below_moment, first, 1)
 
     def _index(self, count: FloatArray) -> np.ndarray:  # type: ignore[type-arg]
         return np.clip(count - self.start, 0, self.below.shape[1] - 1).astype(np.int64)

@@ -95,7 +95,8 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
     def nuisance(self) -> dict[str, Distribution]:
         return {"control": self.control}
 
-    def tooth(self, n: int) -> int:
+    def tooth(self, n: int, null: float) -> int:
+        del null
         return max(12, n // 40)
 
     def nuisance_bounds(self, name: str) -> tuple[float, float]:

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
 FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
 ROUNDS = (1e-3, 1e-6)  # width in log multiple at which a round of the search stops and the panels are laid anew
 STEPPED = 1e-7  # the same where the panels are laid anew at every step
-ROUGH = 2e-5  # the same where the probability jumps at more counts than panels can end on
+ROUGH = 1e-4  # the same where the probability jumps at more counts than panels can end on
 CLOSE = 1e-11  # the same for the last round
 
 

@@ -48,9 +48,9 @@ class Refined:
     level: int
 
 
-def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float) -> Refined:
+def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float, goal: float = GOAL) -> Refined:
     """Raise the level until no reading changes by more than the goal, or the last level is reached."""
-    goal = min(GOAL, tolerance)
+    goal = min(goal, tolerance)
     before = cells(integrate(study, n, 0))
     last: dict[str, Number] = {}
     for level in range(1, len(LEVELS)):
@@ -60,10 +60,10 @@ def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float
         if study.design.saw_tooth:
             numbers, last = _no_luck(numbers, last), numbers
         cells_error = np.abs(now.by_state - before.by_state)[:, 0] + ROUNDING
-        if _all_settled(numbers, cells_error, goal):
+        if _all_settled(numbers, goal):
             break
         costly = joint.effect.size * joint.work > COSTLY
-        if costly and _all_settled(numbers, cells_error, tolerance / 2):
+        if costly and _all_settled(numbers, tolerance / 2):
             break
         if level + 1 < len(LEVELS):
             before = now
@@ -78,8 +78,8 @@ def _no_luck(numbers: dict[str, Number], last: dict[str, Number]) -> dict[str, N
     }
 
 
-def _all_settled(numbers: dict[str, Number], cells_error: FloatArray, goal: float) -> bool:
-    return bool(cells_error.max() <= goal and all(_settled(number, goal).all() for number in numbers.values()))
+def _all_settled(numbers: dict[str, Number], goal: float) -> bool:
+    return all(bool(_settled(number, goal).all()) for number in numbers.values())
 
 
 def _settled(number: Number, goal: float) -> BoolArray:
@@ -94,7 +94,7 @@ def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio]) -> dict[str, N
         value, old = ratio.value[:, 0], before[name].value[:, 0]
         weight = ratio.denominator[:, 0]
         with np.errstate(invalid="ignore", divide="ignore"):
-            rounding = ROUNDING * np.maximum(1.0, np.abs(value)) / np.minimum(1.0, weight)
+            rounding = ROUNDING * np.maximum(1.0, np.abs(value))  # sums of positive terms keep their digits, rare or not
             numbers[name] = Number(value, np.abs(value - old) + rounding, ratio.why_null, weight)
     return numbers
 

@@ -16,6 +16,9 @@ from bayesdesign.joint.table import Cells
 from bayesdesign.study.study import Study
 
 
+LEAST = 1e-12  # a condition less likely than this is none: its sums are rounding
+
+
 @final
 @dataclass(frozen=True, slots=True)
 class Ratio:
@@ -27,9 +30,9 @@ class Ratio:
 
     @property
     def value(self) -> FloatArray:
-        """The ratio, NaN where the denominator is 0."""
+        """The ratio, NaN where the condition has practically no probability."""
         with np.errstate(divide="ignore", invalid="ignore"):
-            return np.where(self.denominator > 0, self.numerator / self.denominator, np.nan)
+            return np.where(self.denominator > LEAST, self.numerator / self.denominator, np.nan)
 
 
 @final

@@ -183,7 +183,7 @@ class Context:
         """An effect in natural units, for a sentence."""
         if self.study.design.ratio_scale:
             return f"{effect:.3g}"
-        return f"{effect:.3g} {self.study.effect.unit}".rstrip()
+        return f"{effect:.3g} {self.study.effect.unit[:40]}".rstrip()
 
 
 def hundred(p: float) -> str:

@@ -74,7 +74,8 @@ def nuisance_nodes(
     for name, belief in nuisance.items():
         cuts = (kinks or {}).get(name, np.empty(0))
         cuts = cuts[(belief.cdf(cuts) > NEGLIGIBLE) & (belief.sf(cuts) > NEGLIGIBLE)]
-        x, w = _one_nuisance(belief, order, cuts, panels or cuts.size > 0)
+        cut = cuts.size > 0 and not panels
+        x, w = _one_nuisance(belief, max(3, order // 3) if cut else order, cuts, panels or cut)
         grids = [np.repeat(g, len(x)) for g in grids] + [np.tile(x, len(weight))]
         weight = np.repeat(weight, len(x)) * np.tile(w, len(weight))
     keep = weight > NEGLIGIBLE

@@ -123,7 +123,8 @@ def test_anchor_8_posterior_after_an_estimate() -> None:
     both(after.sd, 0.1154701, sd)
     both(after.above_null, 0.9783459, special.ndtr(mean / sd))
     both(after.states["higher"], 0.2818514, special.ndtr((mean - 0.3) / sd))
-    both(value(setting(planning_value=0.2), "power_at_planning_value"), 0.2929889, up(0.2))
+    observed = study(DESIGN, BELIEF, favourable="either", planning_value=0.2)
+    both(value(observed, "power_at_planning_value"), 0.2929889, up(0.2) + up(-0.2))
 
 
 def test_anchor_9_conflict_of_prior_and_data() -> None:
@@ -198,11 +199,6 @@ def test_anchor_14_assurance_and_median_exaggeration_about_the_null() -> None:
     quantities = answer(study(DESIGN, Normal(mean=0.0, sd=T))).quantities
     both(quantities["assurance"].value, 0.2578086, 2 * special.ndtr(-Z * S / math.hypot(S, T)))  # type: ignore[arg-type]
     assert quantities["exaggeration_median"].value == pytest.approx(1.4998435, abs=PRINTED)
-
-
-def test_anchor_15_the_mean_of_ratios_does_not_exist_but_the_ratio_of_means_does() -> None:
-    made = study(DESIGN, Normal(mean=0.0, sd=T))
-    assert value(made, "exaggeration_ratio") < value(made, "exaggeration_median") < 1.6
 
 
 def test_anchor_16_saw_tooth_of_a_single_arm() -> None:

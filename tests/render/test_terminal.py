@@ -13,7 +13,7 @@ from bayesdesign.result import Comparison, DecisionTable, SizeAnswer
 from .examples import STUDIES, answer
 
 BANNED = re.compile(
-    r"accept(s|ed|ing)? the null|null( hypothesis)? is (true|accepted)|no effect\b|no difference\b|prove[sn]?\b",
+    r"accept\w* the null|null( hypothesis)? is (true|accepted)|no effect\b|no difference\b|prove[sn]?\b",
     re.IGNORECASE,
 )
 
@@ -136,8 +136,8 @@ def test_several_sizes_one_row_each():
 
 def with_size(name="zone", **changes):
     size = {
-        "measure": "assurance", "target": 0.8, "direction": "at_least", "first_n": 40, "safe_n": 40, "achieved": 0.8012,
-        "ceiling": 0.885, "searched_to": 5000,
+        "measure": "assurance", "target": 0.8, "direction": "at_least", "first_n": 40, "safe_n": 40,
+        "achieved": 0.8012, "ceiling": 0.885, "searched_to": 5000,
     }  # fmt: skip
     return " ".join(
         result_text(replace(answer(name), command="size", size=SizeAnswer(**(size | changes)))).split()
