@@ -16,7 +16,7 @@ from bayesdesign.design.base import Accuracy, Analysis, Design, Outcomes, Side, 
 from bayesdesign.design.decided import Decides, LogLikelihood, log_binomial
 from bayesdesign.prior.base import Distribution
 
-STEPPED_TO = 1_000  # size up to which every jump of the median's search is given a panel of its own
+STEPPED_TO = 200  # size up to which every jump of the median's search is given a panel of its own
 TIE = 1 + 1e-10  # a p-value equal to the level rejects, whatever the last bits say
 
 
@@ -153,7 +153,7 @@ class BinomialCount(Outcomes):
 
     @property
     def rough_error(self) -> float:
-        return 0.0 if self.stepped else 1 / float(self.n.min())
+        return 0.0 if self.stepped else 0.03 / float(self.n.min())
 
     def null_outcome(self) -> FloatArray:
         return (self.n * self.null)[:, None, None]
@@ -162,6 +162,19 @@ class BinomialCount(Outcomes):
         n = self.n[:, None, None]
         slack = 1e-9  # counts at exactly this distance are within it
         return (n * (self.null - reach) - slack)[..., None], (n * (self.null + reach) + slack)[..., None]
+
+    def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
+        if self.stepped:
+            return Outcomes.probabilities_within(self, effect, regions, reach)
+        # without a panel for every jump, each is spread over the unit around it by the beta function at real counts
+        n = self.n[:, None, None]
+        low, high = n * (self.null - reach), n * (self.null + reach)
+        total = np.zeros(effect.shape)
+        for region in regions:
+            for lower, upper in zip(region.lower, region.upper, strict=True):
+                first, last = np.maximum(lower, low), np.minimum(upper, high)
+                total += np.where(first < last, binomial.cdf(last - 0.5, n, effect) - binomial.cdf(first - 0.5, n, effect), 0.0)
+        return total
 
     def measure(self, effect: FloatArray, lower: FloatArray, upper: FloatArray) -> tuple[FloatArray, FloatArray]:
         n = self.n[:, None, None]
@@ -178,7 +191,10 @@ class BinomialCount(Outcomes):
         for bound in (bound for region in regions for side in (region.lower, region.upper) for bound in side):
             share = np.clip(np.where(np.isinf(bound), np.nan, bound) / n, 0.0, 1.0)
             se = np.sqrt(np.maximum(share * (1 - share), 1 / n) / n)
-            points.append(share + se * np.array([-7.0, -3.5, -1.2, 1.2, 3.5, 7.0]))
+            points.append(share + se * np.array([-7.0, -3.5, -1.2, 0.0, 1.2, 3.5, 7.0]))
+        if multiple is not None and not self.stepped:
+            near = [(p - self.null) / multiple[:, None, None] for p in points]
+            points += [self.null + x for x in near] + [self.null - x for x in near]
         if multiple is not None and self.stepped:
             counts = np.arange(self.n.max() + 1) / n
             steps = (np.where(counts <= 1, counts, self.null) - self.null) / multiple[:, None, None]

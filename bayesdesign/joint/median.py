@@ -14,7 +14,7 @@ if TYPE_CHECKING:
 FARTHEST = 60.0  # log multiple beyond which the median is reported as infinite
 ROUNDS = (1e-3, 1e-6)  # width in log multiple at which a round of the search stops and the panels are laid anew
 STEPPED = 1e-7  # the same where the panels are laid anew at every step
-ROUGH = 1e-4  # the same where the probability jumps at more counts than panels can end on
+ROUGH = 1e-5  # the last round where jumps are only averaged
 CLOSE = 1e-11  # the same for the last round
 
 
@@ -39,13 +39,12 @@ def median_multiple(setting: "Setting", near: FloatArray | None = None) -> Float
         low, high = _bracket(relaid, claimed, rough if not known else start, 1e-4 if known else 3e-3)
         return _finish(root_of_increasing(relaid, low, high, STEPPED), claimed)
     low, high = _bracket(excess, claimed, start, step)
-    if setting.outcomes.rough_error:
-        return _finish(root_of_increasing(excess, low, high, ROUGH), claimed)
-    for close in ROUNDS:
+    rounds, last = (ROUNDS[:1], ROUGH) if setting.outcomes.rough_error else (ROUNDS, CLOSE)
+    for close in rounds:
         found = root_of_increasing(excess, low, high, close)
         excess, claimed = _excess(setting, truth_nodes(setting, multiple=np.exp(np.clip(found, -FARTHEST, FARTHEST))))
         low, high = _bracket(excess, claimed, found, 4 * close)
-    return _finish(root_of_increasing(excess, low, high, CLOSE), claimed)
+    return _finish(root_of_increasing(excess, low, high, last), claimed)
 
 
 def _relaid(setting: "Setting", at: FloatArray) -> FloatArray:
