@@ -19,7 +19,9 @@ if TYPE_CHECKING:
     from bayesdesign.core.arrays import FloatArray
     from bayesdesign.study.study import Study, Target
 
-QUICK = 1e-5  # change between refinements that is enough where the target is far off
+# measures that never exceed their limit by more than a trace
+BOUNDED = ("assurance", "assurance_true_effect", "expected_power", "average_power", "power_at_planning_value")
+QUICK = (1e-5, 1e-7)  # changes between refinements that are enough where the target is further off
 CLEAR = 1e-9  # a measure this close below its target counts as meeting it
 PLANNING = ("power_at_planning_value", "type_s_at_planning_value", "exaggeration_at_planning_value")
 COSTLY_N = 1_000  # sizes beyond which a search that cannot succeed stops for designs with counts
@@ -91,7 +93,8 @@ def _search(study: "Study", target: "Target", ceiling: float | None, tolerance: 
     most = target.max_n
     if not study.design.saw_tooth:
         return monotone_search(lambda sizes: [m >= 0 for m in margins(sizes)], least, most)
-    hopeless = ceiling is not None and _margin(target, np.array(ceiling)) < 0
+    bounded = target.at_least is not None and target.measure in BOUNDED
+    hopeless = bounded and ceiling is not None and _margin(target, np.array(ceiling)) < 0
     return saw_tooth_search(
         SawTooth(margins, least, min(most, max(COSTLY_N, least)) if hopeless else most, lambda n: study.design.tooth(n, study.null))
     )
@@ -108,9 +111,9 @@ def measured(study: "Study", n: Sequence[int], name: str, tolerance: float, boun
     def read(c: Cells, s: "Study") -> dict[str, Ratio]:
         return {name: every(c, s)[name]}
 
-    if bound is not None:
-        quick = refine(fixed, n, read, tolerance=1.0, goal=QUICK).numbers[name]
-        if not (np.abs(quick.value - bound) < 50 * np.maximum(quick.error, CLEAR)).any():
+    for goal in QUICK if bound is not None else ():
+        quick = refine(fixed, n, read, tolerance=1.0, goal=goal).numbers[name]
+        if not (np.abs(quick.value - bound) < 5 * np.maximum(quick.error, CLEAR)).any():
             return quick.value
     return refine(fixed, n, read, tolerance).numbers[name].value
 

@@ -80,7 +80,7 @@ def verdict_of(
     claimed = decision is not None and decision in study.rule.claims
     verdict = _conflicting(view) or (_after_claim(view) if claimed else _after_silence(view))
     if given == "decision":
-        return Verdict(verdict.code, f"Knowing only the decision: {verdict.sentence}")
+        return Verdict(verdict.code, f"Knowing only the decision: {verdict.sentence[0].lower()}{verdict.sentence[1:]}")
     return verdict
 
 

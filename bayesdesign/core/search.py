@@ -110,8 +110,9 @@ class SawTooth:
 def saw_tooth_search(teeth: SawTooth) -> Found:
     """First and safe n where the measure goes up and down with n.
 
-    A geometric grid finds one n that meets the target. From there every n is worked out, downwards until a whole block fails by more
-    than its own up and down, and upwards until a whole block meets the target by more than that.
+    A geometric grid and bisection find one n that meets the target close to where it is first met. From there every n is worked out,
+    downwards until a whole block fails by more than its own up and down, and upwards until a whole block meets the target by
+    more than that.
     """
     margins: dict[int, float] = {}
 
@@ -121,14 +122,15 @@ def saw_tooth_search(teeth: SawTooth) -> Found:
         margins.update(zip(new, teeth.values(new), strict=True))
         return [margins[n] for n in wanted]
 
-    hit, n = None, teeth.least
-    scan(n, n + 15)
+    hit, before = None, teeth.least
     for n in _grid(teeth.least, teeth.most, dense=15):
-        if n not in margins:
-            scan(n, n)
-        if margins[n] >= 0:
+        if scan(n, n)[0] >= 0:
             hit = n
             break
+        before = n
+    while hit is not None and hit - before > teeth.block(hit):
+        middle = (before + hit) // 2
+        before, hit = (before, middle) if scan(middle, middle)[0] >= 0 else (middle, hit)
     if hit is None:
         low = max(teeth.least, n - 2 * teeth.block(n))
         scan(low, n)
