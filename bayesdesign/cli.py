@@ -130,9 +130,7 @@ class Share(click.FloatRange):
 def _options(*, computes: bool) -> Callable[[Callable[..., Any]], Callable[..., Any]]:
     """The common options, handed to the command as one `Options`."""
     shown = [
-        click.option(
-            "--json", "as_json", is_flag=True, help="One JSON document on standard output and nothing else."
-        ),
+        click.option("--json", "as_json", is_flag=True, help="One JSON document on standard output and nothing else."),
         click.option("--out", metavar="FILE", help="Write to FILE, whole or not at all."),
         click.option("--quiet", is_flag=True, help="No progress and no remarks on standard error."),
         click.option("--debug", is_flag=True, help="Show the traceback of a bug."),
@@ -269,9 +267,7 @@ def size(*, study: str, options: Options) -> Output:
 @click.argument("study", metavar="STUDY.toml")
 @click.option("--decision", metavar="NAME", help="Only the decision is known, e.g. not_reject.")
 @click.option("--estimate", type=float, metavar="X", help="The estimate of the effect, on its own scale.")
-@click.option(
-    "--se", type=float, metavar="S", help="Its standard error (of the logarithm, on a ratio scale)."
-)
+@click.option("--se", type=float, metavar="S", help="Its standard error (of the logarithm, on a ratio scale).")
 @click.option("--p-value", metavar="P", help="Only the p-value of the study's test is known.")
 @click.option("--data", metavar="FILE.csv", help="The study's data.")
 @click.option("--n", "n", type=Size(), metavar="N", help="The size the study had; default the planned one.")
@@ -292,7 +288,8 @@ def interpret(*, study: str, options: Options, data: str | None, **known: Any) -
     with options.working("computing"):
         from bayesdesign.interpret import interpret as compute
 
-        found = compute(read, **known, **options.computing)
+        computing = {name: value for name, value in options.computing.items() if name != "draws"}
+        found = compute(read, **known, **computing)
     if options.as_json:
         return _json(found.to_dict(), options)
     from bayesdesign.render.after import interpretation_text

@@ -8,7 +8,7 @@ from scipy import special
 
 from bayesdesign.core.errors import Fault, NotOffered, StudyError
 from bayesdesign.design.estimate import known_error
-from bayesdesign.evaluate import DRAWS, SEED, TOLERANCE, Route, evaluate, resolve_sizes
+from bayesdesign.evaluate import SEED, TOLERANCE, Route, evaluate, resolve_sizes
 from bayesdesign.joint.evidence import decision_evidence, estimate_evidence, p_value_evidence
 from bayesdesign.joint.posterior import Evidence, Posterior, posterior_by_integration
 from bayesdesign.result import Result
@@ -21,9 +21,9 @@ from bayesdesign.verdict import Verdict, verdict_of
 class Interpretation:
     """A finished study: its posterior, set beside the prior and what the design was worth.
 
-    decision is the study's own, or the one its estimate or p-value amounts to; conflict the two-sided prior predictive tail
-    probability of the estimate (Box 1980), None when only the decision or the p-value is known; `nuts` the same posterior by
-    MCMC where a route asked for it.
+    decision is the study's own, or the one its estimate or p-value amounts to; conflict the two-sided prior
+    predictive tail probability of the estimate (Box 1980), None when only the decision or the p-value is known;
+    `nuts` the same posterior by MCMC where a route asked for it.
     """
 
     study: Study
@@ -82,7 +82,6 @@ def interpret(
     mass: float = 0.95,
     route: Route = "integration",
     seed: int = SEED,
-    draws: int = DRAWS,
     tolerance: float = TOLERANCE,
 ) -> Interpretation:
     """The posterior after a finished study, from whatever is at hand.
@@ -98,13 +97,16 @@ def interpret(
 
     Raises:
         StudyError: the report is incomplete or impossible.
-        Refused: the evidence is practically impossible under the prior, a number misses the tolerance, or a sampler fails.
+        Refused: the evidence is practically impossible under the prior, a number misses the tolerance, or a sampler
+        fails.
     """
     _check(study, decision, estimate, se, p_value, mass)
     size = resolve_sizes(study, n)[0]
     given, evidence, reached = _evidence(study, size, decision, estimate, se, p_value)
     after = posterior_by_integration(study, size, evidence, mass, tolerance)
-    design = evaluate(study, None if size is None or n is None else [size], route="integration", seed=seed, tolerance=tolerance)
+    design = evaluate(
+        study, None if size is None or n is None else [size], route="integration", seed=seed, tolerance=tolerance
+    )
     before = np.array(design.answers[0].table.joint).sum(axis=1)
     conflict = _conflict(study, estimate, se, size) if estimate is not None and se is not None else None
     known = _without_moments(study, given, after)
@@ -113,7 +115,13 @@ def interpret(
         given=given,
         reported={
             key: value
-            for key, value in (("decision", decision), ("estimate", estimate), ("se", se), ("p_value", p_value), ("n", size))
+            for key, value in (
+                ("decision", decision),
+                ("estimate", estimate),
+                ("se", se),
+                ("p_value", p_value),
+                ("n", size),
+            )
             if value is not None
         },
         decision=reached,
@@ -122,38 +130,87 @@ def interpret(
         conflict=conflict,
         verdict=verdict_of(study, given, reached, known, design.answers[0], conflict),
         design=design,
-        nuts=_by_nuts(study, decision, estimate, se, given, known, size, seed, mass) if route != "integration" else None,
+        nuts=_by_nuts(study, decision, estimate, se, given, known, size, seed, mass)
+        if route != "integration"
+        else None,
     )
 
 
 def _check(
-    study: Study, decision: str | None, estimate: float | None, se: float | None, p_value: float | str | None, mass: float
+    study: Study,
+    decision: str | None,
+    estimate: float | None,
+    se: float | None,
+    p_value: float | str | None,
+    mass: float,
 ) -> None:
     faults = []
     if decision is None and estimate is None and p_value is None:
-        faults.append(Fault(where="--decision", problem="nothing is reported", allowed="give --decision, --p-value, or --estimate with --se"))
+        faults.append(
+            Fault(
+                where="--decision",
+                problem="nothing is reported",
+                allowed="give --decision, --p-value, or --estimate with --se",
+            )
+        )
     if decision is not None and decision not in study.rule.decisions:
-        faults.append(Fault(where="--decision", problem="not a decision of this rule", got=str(decision)[:60], allowed=", ".join(study.rule.decisions)))
+        faults.append(
+            Fault(
+                where="--decision",
+                problem="not a decision of this rule",
+                got=str(decision)[:60],
+                allowed=", ".join(study.rule.decisions),
+            )
+        )
     if (estimate is None) != (se is None):
         missing = "--se" if se is None else "--estimate"
         faults.append(Fault(where=missing, problem="missing", allowed="an estimate and its standard error go together"))
     if estimate is not None and not (np.isfinite(estimate) and (estimate > 0 or not study.design.ratio_scale)):
-        faults.append(Fault(where="--estimate", problem="not a possible estimate", got=f"{estimate:g}", allowed="a finite number, above 0 for a ratio"))
+        faults.append(
+            Fault(
+                where="--estimate",
+                problem="not a possible estimate",
+                got=f"{estimate:g}",
+                allowed="a finite number, above 0 for a ratio",
+            )
+        )
     if se is not None and not (np.isfinite(se) and se > 0):
-        faults.append(Fault(where="--se", problem="not a standard error", got=f"{se:g}", allowed="a finite number above 0"))
+        faults.append(
+            Fault(where="--se", problem="not a standard error", got=f"{se:g}", allowed="a finite number above 0")
+        )
     if p_value is not None and not 0 < _number(p_value) <= 1:
-        faults.append(Fault(where="--p-value", problem="not a p-value", got=str(p_value)[:60], allowed="a number above 0 and at most 1"))
+        faults.append(
+            Fault(
+                where="--p-value",
+                problem="not a p-value",
+                got=str(p_value)[:60],
+                allowed="a number above 0 and at most 1",
+            )
+        )
     if estimate is not None and (p_value is not None or decision is not None):
-        faults.append(Fault(where="--estimate", problem="given together with a p-value or a decision", allowed="the estimate alone says more than both"))
+        faults.append(
+            Fault(
+                where="--estimate",
+                problem="given together with a p-value or a decision",
+                allowed="the estimate alone says more than both",
+            )
+        )
     level = getattr(study.rule, "alpha", None)
-    if decision is not None and p_value is not None and level is not None and not faults:
-        if (_number(p_value) <= level) != (decision in study.rule.claims):
-            faults.append(
+    if (
+        decision is not None
+        and p_value is not None
+        and level is not None
+        and not faults
+        and (_number(p_value) <= level) != (decision in study.rule.claims)
+    ):
+        faults.append(
                 Fault(where="--p-value", problem=f"does not go with the decision {decision}", got=str(p_value)[:60],
                       allowed=f"the rule claims an effect at p <= {level:g}")
             )  # fmt: skip
     if not 0 < mass < 1:
-        faults.append(Fault(where="--mass", problem="not a probability", got=f"{mass:g}", allowed="a number between 0 and 1"))
+        faults.append(
+            Fault(where="--mass", problem="not a probability", got=f"{mass:g}", allowed="a number between 0 and 1")
+        )
     if faults:
         raise StudyError(faults, study.file)
 
@@ -173,7 +230,12 @@ def _decimals(p: float | str) -> int:
 
 
 def _evidence(
-    study: Study, n: int | None, decision: str | None, estimate: float | None, se: float | None, p_value: float | str | None
+    study: Study,
+    n: int | None,
+    decision: str | None,
+    estimate: float | None,
+    se: float | None,
+    p_value: float | str | None,
 ) -> tuple[str, Evidence, str | None]:
     """What is known, its likelihood, and the decision it amounts to (None where that is not known)."""
     if estimate is not None and se is not None:
@@ -205,7 +267,9 @@ def _decision_of_estimate(study: Study, estimate: float, se: float) -> str | Non
 
 
 def _conflict(study: Study, estimate: float, se: float, n: int | None) -> float:
-    """Two-sided prior predictive tail probability of the estimate: 2 min(P(new estimate <= it), P(new estimate >= it))."""
+    """Two-sided prior predictive tail probability of the estimate: 2 min(P(new estimate <= it), P(new estimate >=
+    it)).
+    """
     from bayesdesign.joint.integration import set_up, truth_nodes
 
     truths = truth_nodes(set_up(study, [n], 2))
@@ -229,4 +293,6 @@ def _by_nuts(
 ) -> dict[str, Any]:  # fmt: skip
     from bayesdesign.joint.nuts import checked_posterior
 
-    return checked_posterior(study, n=n, decision=decision, estimate=estimate, se=se, given=given, against=after, seed=seed, mass=mass)
+    return checked_posterior(
+        study, n=n, decision=decision, estimate=estimate, se=se, given=given, against=after, seed=seed, mass=mass
+    )

@@ -105,8 +105,8 @@ class Message:
 class SizeAnswer:
     """Result of the size search; `first_n` is None when no n up to `searched_to` meets the target.
 
-    first_n: least n that meets it; safe_n: least n from which every n up to `searched_to` does (None if the last one fails).
-    ceiling: limit of the measure as n grows, where it is known.
+    first_n: least n that meets it; safe_n: least n from which every n up to `searched_to` does (None if the last one
+    fails). ceiling: limit of the measure as n grows, where it is known.
     """
 
     measure: str
@@ -153,7 +153,7 @@ class Result:
         """The joint table as an xarray Dataset."""
         import xarray as xr
 
-        parts = [table.dataset() for table in self.tables]
+        parts: list[xr.Dataset] = [table.dataset() for table in self.tables]
         return parts[0] if len(parts) == 1 else xr.concat(parts, dim="n")
 
     def to_dict(self) -> dict[str, Any]:

@@ -37,9 +37,9 @@ def size(
 ) -> Result:
     """The least n that meets `study.target`, with everything at that n.
 
-    `result.size` holds the first n that meets the target and, since designs with counts go up and down with n, the n from which every
-    larger one (up to `searched_to`) does. Where the limit of the measure misses the target no n is claimed. The search is by
-    integration; `route` is for the numbers at the n found.
+    `result.size` holds the first n that meets the target and, since designs with counts go up and down with n, the n
+    from which every larger one (up to `searched_to`) does. Where the limit of the measure misses the target no n is
+    claimed. The search is by integration; `route` is for the numbers at the n found.
 
     Raises:
         StudyError: no `[target]`, or a design without n.
@@ -47,10 +47,24 @@ def size(
     """
     target = study.target
     if target is None:
-        raise StudyError([Fault(where="[target] measure", problem="missing", allowed="size needs a measure with at_least or at_most")], study.file)
+        raise StudyError(
+            [
+                Fault(
+                    where="[target] measure", problem="missing", allowed="size needs a measure with at_least or at_most"
+                )
+            ],
+            study.file,
+        )
     if study.design.planned_n is None:
         raise StudyError(
-            [Fault(where="[design] standard_error", problem="this design has no n to search", allowed="give n and unit_sd instead")], study.file
+            [
+                Fault(
+                    where="[design] standard_error",
+                    problem="this design has no n to search",
+                    allowed="give n and unit_sd instead",
+                )
+            ],
+            study.file,
         )
     ceiling = limit_of(study, target.measure)
     found = _search(study, target, ceiling, tolerance)
@@ -87,7 +101,9 @@ def _search(study: "Study", target: "Target", ceiling: float | None, tolerance: 
 
     def margins(sizes: list[int]) -> list[float]:
         blocks = [sizes[i : i + step] for i in range(0, len(sizes), step)]
-        values = [_margin(target, measured(study, block, target.measure, tolerance, _bound(target))) for block in blocks]
+        values = [
+            _margin(target, measured(study, block, target.measure, tolerance, _bound(target))) for block in blocks
+        ]
         return [float(m) for block in values for m in block]
 
     most = target.max_n
@@ -96,7 +112,12 @@ def _search(study: "Study", target: "Target", ceiling: float | None, tolerance: 
     bounded = target.at_least is not None and target.measure in BOUNDED
     hopeless = bounded and ceiling is not None and _margin(target, np.array(ceiling)) < 0
     return saw_tooth_search(
-        SawTooth(margins, least, min(most, max(COSTLY_N, least)) if hopeless else most, lambda n: study.design.tooth(n, study.null))
+        SawTooth(
+            margins,
+            least,
+            min(most, max(COSTLY_N, least)) if hopeless else most,
+            lambda n: study.design.tooth(n, study.null),
+        )
     )
 
 
@@ -106,12 +127,16 @@ def measured(study: "Study", n: Sequence[int], name: str, tolerance: float, boun
         return integrated(study, n, tolerance).by_name[name].value
     fixed, every = (at_planning_value(study), planning_readings) if name in PLANNING else (study, readings)
     if isinstance(fixed, str):
-        raise StudyError([Fault(where="[target] measure", problem="cannot be computed", got=name, allowed=fixed)], study.file)
+        raise StudyError(
+            [Fault(where="[target] measure", problem="cannot be computed", got=name, allowed=fixed)], study.file
+        )
 
     def read(c: Cells, s: "Study") -> dict[str, Ratio]:
         return {name: every(c, s)[name]}
 
-    for goal in QUICK if bound is not None else ():
+    if bound is None:
+        return refine(fixed, n, read, tolerance).numbers[name].value
+    for goal in QUICK:
         quick = refine(fixed, n, read, tolerance=1.0, goal=goal).numbers[name]
         if not (np.abs(quick.value - bound) < 5 * np.maximum(quick.error, CLEAR)).any():
             return quick.value
@@ -119,16 +144,16 @@ def measured(study: "Study", n: Sequence[int], name: str, tolerance: float, boun
 
 
 def limit_of(study: "Study", name: str) -> float | None:
-    """Limit of a measure as n grows without bound: the readings of the table in which every decision is the limiting one."""
+    """Limit of a measure as n grows without bound: the readings of the table in which every decision is the limiting
+    one.
+    """
     if name == "exaggeration_median":
         return 1.0
     fixed = at_planning_value(study) if name in PLANNING else study
     if isinstance(fixed, str):
         return None
     table = integrate(fixed, [study.design.planned_n], 2)
-    limiting = replace(
-        table, probability=table.limit, absolute=table.limit * np.abs(table.distance)[..., None]
-    )
+    limiting = replace(table, probability=table.limit, absolute=table.limit * np.abs(table.distance)[..., None])
     read = planning_readings if name in PLANNING else readings
     value = float(read(cells(limiting), fixed)[name].value[0, 0])
     return value if np.isfinite(value) else None

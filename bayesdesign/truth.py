@@ -17,8 +17,8 @@ EDGE = 1e-12  # an effect this close (relatively) to a boundary lies on it: 0.6 
 class States:
     """Named states in order of the effect, split at `edges` on the distance scale (0 is the null).
 
-    `own_null` gives exact nulls a state of their own, in the middle. `null` is the index of the null state (None if there is none);
-    `favourable` the indices of the states in which the favourable decision is the right one.
+    `own_null` gives exact nulls a state of their own, in the middle. `null` is the index of the null state (None if
+    there is none); `favourable` the indices of the states in which the favourable decision is the right one.
     """
 
     names: tuple[str, ...]
@@ -31,6 +31,8 @@ class States:
     def about_null(cls, *, smallest_relevant: float | None, exact_null: bool, favourable: Favourable) -> Self:
         """States around the null; `smallest_relevant` is a distance on the working scale."""
         right = {"higher": (-1,), "lower": (0,), "either": (0, -1)}[favourable]
+        names: tuple[str, ...]
+        edges: tuple[float, ...]
         if smallest_relevant is not None:
             names, edges = ("lower", "negligible", "higher"), (-smallest_relevant, smallest_relevant)
         elif exact_null:

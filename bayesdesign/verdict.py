@@ -58,7 +58,9 @@ class _View:
 
 
 def in_100(probability: float) -> str:
-    """A probability as a count out of 100 (out of 1000 or 10,000 when it is small), never rounded to nothing or to everything."""
+    """A probability as a count out of 100 (out of 1000 or 10,000 when it is small), never rounded to nothing or to
+    everything.
+    """
     for base in (100, 1_000, 10_000):
         count = round(probability * base)
         if 0 < count < base:
@@ -89,7 +91,8 @@ def _conflicting(view: _View) -> Verdict | None:
         return None
     return Verdict(
         "conflict-with-prior",
-        f"The data and the prior expectation disagree: an estimate this far out was expected in {in_100(view.conflict)} such studies. "
+        f"The data and the prior expectation disagree: an estimate this far out was expected in "
+        f"{in_100(view.conflict)} such studies. "
         "Conclusions depend on which of the two is believed; settle that first.",
     )
 
@@ -100,19 +103,22 @@ def _after_silence(view: _View) -> Verdict:
     if view.has_zone and after.states["negligible"] >= SURE:
         return Verdict(
             "practically-negligible",
-            f"Any effect is probably too small to matter: {in_100(after.states['negligible'])} that it lies within {_threshold(view.study)} of the null.",
+            f"Any effect is probably too small to matter: {in_100(after.states['negligible'])} that it lies within "
+            f"{_threshold(view.study)} of the null.",
         )
     if view.has_zone and view.relevant(good) <= UNLIKELY:
         return Verdict(
             "worthwhile-unlikely",
-            f"An effect of {_threshold(view.study)} or more on the {good} side is now unlikely ({in_100(view.relevant(good))}); smaller ones stay possible.",
+            f"An effect of {_threshold(view.study)} or more on the {good} side is now unlikely "
+            f"({in_100(view.relevant(good))}); smaller ones stay possible.",
         )
     for side in (bad, good):
         if view.on(side) >= LEANING:
             kind = "either" if view.study.favourable == "either" else ("favourable" if side == good else "unfavourable")
             return Verdict(
                 f"leaning-{side if kind == 'either' else kind}",
-                f"The evidence points to the {side} side ({in_100(view.on(side))}) but missed the agreed bar; it is no proof.",
+                f"The evidence points to the {side} side ({in_100(view.on(side))}) but missed the agreed bar; "
+                "it is no proof.",
             )
     power, factor = _weakness(view)
     if power is not None and power < WEAK_POWER and 1 / 3 <= factor <= 1:
@@ -124,13 +130,16 @@ def _after_silence(view: _View) -> Verdict:
         )
     return Verdict(
         "unresolved",
-        f"The result leaves the question open: with {in_100(after.mass)} probability the effect lies between {after.low:.4g} and {after.high:.4g}, "
-        f"and it is {in_100(view.relevant(good))} that it is {'relevant' if view.has_zone else 'real'} and on the {good} side.",
+        f"The result leaves the question open: with {in_100(after.mass)} probability the effect lies between "
+        f"{after.low:.4g} and {after.high:.4g}, and it is {in_100(view.relevant(good))} that it is "
+        f"{'relevant' if view.has_zone else 'real'} and on the {good} side.",
     )
 
 
 def _weakness(view: _View) -> tuple[float | None, float]:
-    """Chance that an effect worth finding would have been claimed, and how much a silence speaks for it (Bayes factor)."""
+    """Chance that an effect worth finding would have been claimed, and how much a silence speaks for it (Bayes
+    factor).
+    """
     table = view.answer.table
     joint = np.array(table.joint)
     worth = np.array([name not in ("null", "negligible") for name in table.states])
@@ -153,28 +162,33 @@ def _after_claim(view: _View) -> Verdict:
     if right < LEANING:
         return Verdict(
             "sign-in-doubt",
-            f"The result passed the bar, yet it is only {in_100(right)} that the effect really lies on the {side} side.",
+            f"The result passed the bar, yet it is only {in_100(right)} that the effect really lies on the "
+            f"{side} side.",
         )
     if view.has_zone and after.states["negligible"] >= 0.5:
         return Verdict(
             "significant-but-small",
-            f"The effect passed the bar but is probably too small to matter: {in_100(after.states['negligible'])} that it lies within {_threshold(view.study)} of the null.",
+            f"The effect passed the bar but is probably too small to matter: {in_100(after.states['negligible'])} "
+            f"that it lies within {_threshold(view.study)} of the null.",
         )
     if view.has_zone and view.relevant(side) >= SURE:
         return Verdict(
             "relevant-effect-likely",
-            f"A relevant effect on the {side} side is likely: {in_100(view.relevant(side))} for {_threshold(view.study)} or more.",
+            f"A relevant effect on the {side} side is likely: {in_100(view.relevant(side))} for "
+            f"{_threshold(view.study)} or more.",
         )
     exaggeration = view.answer.quantities["exaggeration_ratio"].value
     if isinstance(exaggeration, float) and exaggeration >= EXAGGERATED:
         return Verdict(
             "likely-exaggerated",
-            f"An effect on the {side} side is likely ({in_100(right)}), but studies like this one overstate what they find "
+            f"An effect on the {side} side is likely ({in_100(right)}), but studies like this one overstate what "
+            "they find "
             f"{exaggeration:.1f}-fold on average; plan with the posterior, not with the estimate.",
         )
     if view.has_zone:
         return Verdict(
             "real-relevance-open",
-            f"An effect on the {side} side is likely ({in_100(right)}); whether it reaches {_threshold(view.study)} is open ({in_100(view.relevant(side))}).",
+            f"An effect on the {side} side is likely ({in_100(right)}); whether it reaches "
+            f"{_threshold(view.study)} is open ({in_100(view.relevant(side))}).",
         )
     return Verdict("effect-likely", f"An effect on the {side} side is likely: {in_100(right)}.")

@@ -70,9 +70,9 @@ sizes = st.integers(2, 60)
 
 
 @st.composite
-def lines(draw: st.DrawFn, *, known_sd: bool = False, welch: bool = False) -> Design:
+def lines(draw: st.DrawFn, *, uncertain: bool = False, welch: bool = False) -> Design:
     """Designs whose estimate is normal around the truth."""
-    n, sd = draw(sizes), draw(st.builds(Point, value=numbers(0.5, 3.0)) if known_sd else scales)
+    n, sd = draw(sizes), draw(scales if uncertain else st.builds(Point, value=numbers(0.5, 3.0)))
     analysis: Any = draw(st.sampled_from(["t", "z"]))
     family = draw(st.sampled_from(["estimate", "one", "paired", "two", "unequal", *(["welch"] if welch else [])]))
     match family:
@@ -111,10 +111,10 @@ def questions(draw: st.DrawFn, null: float, relevant: tuple[float, float]) -> Ef
 
 
 @st.composite
-def line_studies(draw: st.DrawFn, *, priors: st.SearchStrategy[Distribution] = lumpy, welch: bool = False) -> Study:
+def line_studies(draw: st.DrawFn, *, priors: st.SearchStrategy[Distribution] = lumpy, uncertain: bool = False, welch: bool = False) -> Study:
     return Study(
         title="random",
-        design=draw(lines(welch=welch)),
+        design=draw(lines(uncertain=uncertain, welch=welch)),
         prior=Prior(effect=draw(priors), probability_null=draw(spikes)),
         rule=draw(rules),
         effect=draw(questions(draw(st.sampled_from([0.0, 0.3])), (0.05, 0.8))),

@@ -1,4 +1,6 @@
-"""Binomial probabilities for arrays of counts, by the incomplete beta function; right at the ends, quiet outside them."""
+"""Binomial probabilities for arrays of counts, by the incomplete beta function; right at the ends, quiet outside
+them.
+"""
 
 from functools import lru_cache
 
@@ -23,9 +25,7 @@ def sf(k: FloatArray, n: FloatArray, p: FloatArray) -> FloatArray:
 def between(first: FloatArray, last: FloatArray, n: FloatArray, p: FloatArray) -> FloatArray:
     """P(first <= X <= last) from whichever tail is shorter; 0 when first > last."""
     upper = first > n * p
-    mass = np.where(
-        upper, sf(first - 1, n, p) - sf(last, n, p), cdf(last, n, p) - cdf(first - 1, n, p)
-    )
+    mass = np.where(upper, sf(first - 1, n, p) - sf(last, n, p), cdf(last, n, p) - cdf(first - 1, n, p))
     return np.where(first > last, 0.0, np.maximum(mass, 0.0))
 
 

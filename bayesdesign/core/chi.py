@@ -1,8 +1,9 @@
-"""Quadrature over the sample standard deviation: nodes of u = s / sigma, where df * u^2 is chi-square with df degrees of freedom.
+"""Quadrature over the sample standard deviation: nodes of u = s / sigma, where df * u^2 is chi-square with df
+degrees of freedom.
 
-Averaging a normal tail over u gives the noncentral t distribution (its definition as a scale mixture, e.g. Johnson, Kotz and
-Balakrishnan, Continuous Univariate Distributions vol. 2, ch. 31) without the library tail functions, which lose their digits
-or return NaN at large noncentrality.
+Averaging a normal tail over u gives the noncentral t distribution (its definition as a scale mixture, e.g. Johnson,
+Kotz and Balakrishnan, Continuous Univariate Distributions vol. 2, ch. 31) without the library tail functions, which
+lose their digits or return NaN at large noncentrality.
 """
 
 import numpy as np
@@ -19,11 +20,12 @@ OUTSIDE = 1e-26  # chi-square mass left out on either side of the panels
 def sd_ratio_nodes(
     df: FloatArray, critical: FloatArray, order: int, *, rough: bool = False
 ) -> tuple[FloatArray, FloatArray]:
-    """Nodes and weights of u for each of N degrees of freedom, padded with zero weights to one width: two (N, A) arrays.
+    """Nodes and weights of u for each of N degrees of freedom, padded with zero weights to one width: two (N, A)
+    arrays.
 
-    `critical` (N,) is the largest multiple of the standard error that a region will use: a bound at `critical * u` makes an
-    edge of width 1 / critical in u, and the panels must resolve it. `order` is the number of nodes in a panel. `rough` gives up the
-    digits of probabilities far below 1e-8, and needs fewer nodes.
+    `critical` (N,) is the largest multiple of the standard error that a region will use: a bound at `critical * u`
+    makes an edge of width 1 / critical in u, and the panels must resolve it. `order` is the number of nodes in a panel.
+    `rough` gives up the digits of probabilities far below 1e-8, and needs fewer nodes.
     """
     threshold, more = (ROUGH_FROM_DF, 8) if rough else (LAGUERRE_FROM_DF, 16)
     parts = [

@@ -1,8 +1,8 @@
 """Sets of outcomes on one line, as unions of intervals that combine with & | ^ ~.
 
-What a study records is reduced to one number on a line (an estimate, a count), given an auxiliary statistic (a sample sd, the
-other arm's count). A rule's claim is then, for each auxiliary node, a union of intervals of that line. For counts the bounds
-lie between whole numbers, so open and closed ends never matter.
+What a study records is reduced to one number on a line (an estimate, a count), given an auxiliary statistic (a
+sample sd, the other arm's count). A rule's claim is then, for each auxiliary node, a union of intervals of that
+line. For counts the bounds lie between whole numbers, so open and closed ends never matter.
 """
 
 from dataclasses import dataclass

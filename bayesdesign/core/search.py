@@ -1,4 +1,6 @@
-"""Searches over whole numbers: the least count that satisfies a monotone predicate, and the least n that meets a target."""
+"""Searches over whole numbers: the least count that satisfies a monotone predicate, and the least n that meets a
+target.
+"""
 
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -25,7 +27,8 @@ def least_count(holds: Callable[[FloatArray], BoolArray], low: FloatArray, high:
 def root_of_increasing(
     excess: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray, close: float
 ) -> FloatArray:
-    """Roots of increasing functions, one in each bracket low..high, all worked on at once until every bracket is `close`.
+    """Roots of increasing functions, one in each bracket low..high, all worked on at once until every bracket is
+    `close`.
 
     False position that halves the value kept at a retained end (Illinois method, Dowell and Jarratt 1971).
     """
@@ -56,7 +59,9 @@ type Meets = Callable[[list[int]], list[bool]]
 @final
 @dataclass(frozen=True, slots=True)
 class Found:
-    """`first` is the least n that meets the target, `safe` the least from which all up to `searched_to` do; None if there is none."""
+    """`first` is the least n that meets the target, `safe` the least from which all up to `searched_to` do; None if
+    there is none.
+    """
 
     first: int | None
     safe: int | None
@@ -64,7 +69,9 @@ class Found:
 
 
 def monotone_search(meets: Meets, least: int, most: int) -> Found:
-    """First and safe n where the measure is smooth in n: a geometric grid up to `most`, then bisection between grid points."""
+    """First and safe n where the measure is smooth in n: a geometric grid up to `most`, then bisection between grid
+    points.
+    """
     grid = _grid(least, most, dense=1)
     answers = meets(grid)
     if not any(answers):
@@ -99,7 +106,9 @@ def _bisect(meets: Meets, low: int, high: int) -> int:
 @final
 @dataclass(frozen=True, slots=True)
 class SawTooth:
-    """How far a search among discrete outcomes must look around a crossing: `block` n at a time, which must cover a tooth."""
+    """How far a search among discrete outcomes must look around a crossing: `block` n at a time, which must cover a
+    tooth.
+    """
 
     values: Callable[[list[int]], list[float]]  # signed margin: at least 0 where the target is met
     least: int
@@ -110,9 +119,9 @@ class SawTooth:
 def saw_tooth_search(teeth: SawTooth) -> Found:
     """First and safe n where the measure goes up and down with n.
 
-    A geometric grid and bisection find one n that meets the target close to where it is first met. From there every n is worked out,
-    downwards until a whole block fails by more than its own up and down, and upwards until a whole block meets the target by
-    more than that.
+    A geometric grid and bisection find one n that meets the target close to where it is first met. From there every
+    n is worked out, downwards until a whole block fails by more than its own up and down, and upwards until a whole
+    block meets the target by more than that.
     """
     margins: dict[int, float] = {}
 
@@ -140,7 +149,7 @@ def saw_tooth_search(teeth: SawTooth) -> Found:
         hit = hits[0]
     low = _walk(teeth, scan, hit, down=True)
     high = _walk(teeth, scan, hit, down=False)
-    scanned = [k for k in range(low, high + 1)]
+    scanned = range(low, high + 1)
     first = next(k for k in scanned if margins[k] >= 0)
     failing = [k for k in scanned if margins[k] < 0]
     safe = failing[-1] + 1 if failing else first

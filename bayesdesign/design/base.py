@@ -1,8 +1,8 @@
 """The contract of a family: what a study records, and how a rule may question it.
 
-A rule asks an `Outcomes` object for claims ("the test of effect <= v at this level rejects") and gets regions; the joint table
-asks it for the probability of regions at given truths. Neither knows the other. Axes: N sample sizes, M nuisance nodes, K
-effects, A auxiliary nodes, I intervals of a region, R regions.
+A rule asks an `Outcomes` object for claims ("the test of effect <= v at this level rejects") and gets regions; the
+joint table asks it for the probability of regions at given truths. Neither knows the other. Axes: N sample sizes, M
+nuisance nodes, K effects, A auxiliary nodes, I intervals of a region, R regions.
 """
 
 import abc
@@ -48,7 +48,9 @@ class Outcomes(abc.ABC):
 
     @property
     def rough_error(self) -> float:
-        """What `probabilities_within` leaves unsure of a median, relative, where it jumps at more counts than landmarks name; else 0."""
+        """What `probabilities_within` leaves unsure of a median, relative, where it jumps at more counts than
+        landmarks name; else 0.
+        """
         return 0.0
 
     @property
@@ -59,7 +61,9 @@ class Outcomes(abc.ABC):
     def two_sided_test(self, value: float, level: float, tails: Tails) -> tuple[Region, Region]:
         """Where the two-sided test rejects: (towards higher, towards lower). Central: half the level in each tail."""
         if tails != "central":
-            raise NotOffered("tails = 'minimum_likelihood' is a definition for exact tests of counts; use 'central' here")
+            raise NotOffered(
+                "tails = 'minimum_likelihood' is a definition for exact tests of counts; use 'central' here"
+            )
         return self.test(value, level / 2, "higher"), self.test(value, level / 2, "lower")
 
     @abc.abstractmethod
@@ -81,7 +85,8 @@ class Outcomes(abc.ABC):
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
         """Effects (N, M, L) between which the probabilities of the regions are smooth enough for one panel.
 
-        With `multiple` (N,), also the kinks of `probabilities_within` where the reach is that multiple of the effect's distance.
+        With `multiple` (N,), also the kinks of `probabilities_within` where the reach is that multiple of the
+        effect's distance.
         """
 
     def probabilities(self, effect: FloatArray, regions: Sequence[Region]) -> tuple[FloatArray, FloatArray]:
@@ -102,7 +107,9 @@ class Outcomes(abc.ABC):
         return probability, np.maximum(absolute, 0.0)
 
     def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
-        """P(region and |estimate - null| <= reach | truth), (N, M, K), summed over the regions; `reach` is (N, M, K)."""
+        """P(region and |estimate - null| <= reach | truth), (N, M, K), summed over the regions; `reach` is (N, M,
+        K).
+        """
         low, high = self.outcomes_within(reach)
         total = np.zeros(effect.shape)
         for region in regions:
@@ -128,11 +135,12 @@ class Analysis(abc.ABC):
 class Design(abc.ABC):
     """One family with its sample size and nuisance parameters, as the `[design]` table gives them.
 
-    Subclasses are frozen keyword-only dataclasses; a field annotated `Distribution` takes a number or a distribution table.
+    Subclasses are frozen keyword-only dataclasses; a field annotated `Distribution` takes a number or a distribution
+    table.
     """
 
     family: ClassVar[str]
-    example: ClassVar[str]  # its [effect], [design] and [prior] in TOML; the comments describe the [design] keys wherever that is needed
+    example: ClassVar[str]  # its [effect], [design] and [prior] in TOML; the comments describe the [design] keys
     minimum_n: ClassVar[int] = 1
     saw_tooth: ClassVar[bool] = False  # power is not monotone in n, because outcomes are discrete
     sizes_at_once: ClassVar[int] = 4  # how many n one `outcomes` call takes, to bound memory
@@ -152,7 +160,9 @@ class Design(abc.ABC):
         return {self.n_label: n}
 
     def tooth(self, n: int, null: float) -> int:
-        """For designs with counts: a number of consecutive sizes around n that covers some ups and downs of the power."""
+        """For designs with counts: a number of consecutive sizes around n that covers some ups and downs of the
+        power.
+        """
         del n, null
         return 1
 
@@ -204,16 +214,17 @@ class Design(abc.ABC):
         raise NotOffered(f"[prior] treatment is not available for family '{self.family}'; give [prior] effect")
 
     @abc.abstractmethod
-    def outcomes(
-        self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy
-    ) -> Outcomes:
+    def outcomes(self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy) -> Outcomes:
         """What can be recorded at sizes n (N,) and nuisance nodes (M,)."""
 
     @abc.abstractmethod
-    def forward(self, pm: Any, effect: Any, nuisance: Mapping[str, Any], n: int, shape: tuple[int, ...]) -> dict[str, Any]:
+    def forward(
+        self, pm: Any, effect: Any, nuisance: Mapping[str, Any], n: int, shape: tuple[int, ...]
+    ) -> dict[str, Any]:
         """Sufficient statistics of a simulated study as named variables of the PyMC model in context.
 
-        `effect` and the nuisances are PyTensor variables that broadcast to `shape`, one simulated study for each element.
+        `effect` and the nuisances are PyTensor variables that broadcast to `shape`, one simulated study for each
+        element.
         """
 
     def decision_likelihood(
@@ -221,8 +232,8 @@ class Design(abc.ABC):
     ) -> Callable[[Any], Any]:
         """A function from an effect to the log probability of a decision, all in PyTensor, for posteriors by NUTS.
 
-        `decides` says which analysed studies led to the decision. May add variables for what is not recorded (a sample variance)
-        to the model in context. Owes nothing to `outcomes`.
+        `decides` says which analysed studies led to the decision. May add variables for what is not recorded (a
+        sample variance) to the model in context. Owes nothing to `outcomes`.
         """
         raise NotOffered(f"NUTS cannot use a decision alone for family '{self.family}'; use --route integration")
 
@@ -232,4 +243,6 @@ class Design(abc.ABC):
 
     @abc.abstractmethod
     def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> Analysis:
-        """The analyst's view of drawn statistics; `nuisance` is only for analyses that know the parameter (z with known sd)."""
+        """The analyst's view of drawn statistics; `nuisance` is only for analyses that know the parameter (z with
+        known sd).
+        """

@@ -29,12 +29,9 @@ def tail_intervals(decides: Decides, null: float) -> list[tuple[float, float]]:
     """
     tried = [_intervals(decides, null, scale, df) for scale, df in ((1.0, np.inf), (2.5, np.inf), (1.0, 5.0))]
     first = np.array(tried[0])
-    if any(
-        len(other) != len(first) or not np.allclose(other, first, rtol=1e-6, atol=0) for other in tried[1:]
-    ):
+    if any(len(other) != len(first) or not np.allclose(other, first, rtol=1e-6, atol=0) for other in tried[1:]):
         raise NotOffered(
-            "NUTS knows the probability of a decision only where the p-value alone decides; "
-            "use --route integration"
+            "NUTS knows the probability of a decision only where the p-value alone decides; use --route integration"
         )
     if not tried[0]:
         raise NotOffered("this decision never falls, so there is no posterior given it")

@@ -20,7 +20,8 @@ from bayesdesign.prior.point import Point
 class Estimate(Design):
     """An estimate with standard error unit_sd / sqrt(n), or with a given standard error.
 
-    The mediator for every analysis that ends in an estimate and its standard error (normal approximation, common practice).
+    The mediator for every analysis that ends in an estimate and its standard error (normal approximation, common
+    practice).
     """
 
     family: ClassVar[str] = "estimate"
@@ -52,7 +53,9 @@ effect = { distribution = "normal", mean = 0.4, sd = 0.3 }
     def __post_init__(self) -> None:
         by_n, by_error = self.n is not None or self.unit_sd is not None, self.standard_error is not None
         if by_n == by_error or (by_n and (self.n is None or self.unit_sd is None)):
-            raise Invalid([Fault(where="n", problem="sizes do not fit", allowed="give n and unit_sd, or standard_error alone")])
+            raise Invalid(
+                [Fault(where="n", problem="sizes do not fit", allowed="give n and unit_sd, or standard_error alone")]
+            )
         check_values((self.n is None or self.n >= 1, "n", self.n, "a whole number of at least 1"))
 
     @property

@@ -17,9 +17,9 @@ def conditional_bounds(
 ) -> tuple[IntArray, IntArray]:
     """For each total of events 0..n_treated + n_control, (lower, upper): the test rejects when x < lower or x > upper.
 
-    Given the total, the treated count x is hypergeometric under equal proportions (Fisher 1935). `central` holds each tail to
-    `level`; `minimum_likelihood` holds the sum of all probabilities no larger than the count's own to `level`. Only totals that
-    can occur with control counts `y` are filled in; for the others nothing rejects.
+    Given the total, the treated count x is hypergeometric under equal proportions (Fisher 1935). `central` holds
+    each tail to `level`; `minimum_likelihood` holds the sum of all probabilities no larger than the count's own to
+    `level`. Only totals that can occur with control counts `y` are filled in; for the others nothing rejects.
     """
     first, last = int(y.min()), int(min(y.max() + n_treated, n_treated + n_control))
     return _bounds(n_treated, n_control, level, tails, first, last)

@@ -1,8 +1,9 @@
 """Sizes of two groups: equal, or a pair whose ratio is kept when n varies."""
 
+import numpy as np
+
 from bayesdesign.core.arrays import FloatArray
 from bayesdesign.core.errors import Fault, Invalid, check_values
-import numpy as np
 
 
 def check_sizes(n_per_group: int | None, n_treatment: int | None, n_control: int | None, least: int) -> None:
@@ -10,7 +11,13 @@ def check_sizes(n_per_group: int | None, n_treatment: int | None, n_control: int
     pair = (n_treatment is not None, n_control is not None)
     if (n_per_group is not None) == any(pair) or (any(pair) and not all(pair)):
         raise Invalid(
-            [Fault(where="n_per_group", problem="sizes do not fit", allowed="give n_per_group, or n_treatment and n_control")]
+            [
+                Fault(
+                    where="n_per_group",
+                    problem="sizes do not fit",
+                    allowed="give n_per_group, or n_treatment and n_control",
+                )
+            ]
         )
     for key, size in (("n_per_group", n_per_group), ("n_treatment", n_treatment), ("n_control", n_control)):
         check_values((size is None or size >= least, key, size, f"a whole number of at least {least}"))

@@ -16,15 +16,11 @@ from bayesdesign.design.normal_line import NormalAnalysis, NormalLine, critical_
 from bayesdesign.prior.base import Distribution
 
 
-def student_line(
-    se: FloatArray, df: FloatArray, null: float, accuracy: Accuracy
-) -> NormalLine:
+def student_line(se: FloatArray, df: FloatArray, null: float, accuracy: Accuracy) -> NormalLine:
     """The t test: the estimated standard error is se * u, u the ratio of sample to true sd. se (N, M), df (N,)."""
     critical = critical_value(df, accuracy.finest_level)
     u, weight = sd_ratio_nodes(df, critical, accuracy.auxiliary)
-    return NormalLine(
-        se=se, estimated_se=se[..., None] * u[:, None, :], df=df[:, None, None], weight=weight, null=null
-    )
+    return NormalLine(se=se, estimated_se=se[..., None] * u[:, None, :], df=df[:, None, None], weight=weight, null=null)
 
 
 def variance_ratio(pm: Any, name: str, df: float) -> Any:

@@ -43,7 +43,7 @@ class NormalLine(Outcomes):
 
     @property
     def work(self) -> int:
-        return self.weight.shape[1]
+        return int(self.weight.shape[1])
 
     def null_outcome(self) -> FloatArray:
         return np.full((1, 1, 1), self.null)
@@ -91,8 +91,16 @@ class NormalLine(Outcomes):
         total = np.zeros(effect.shape)
         for region in regions:
             for lower, upper in zip(region.lower, region.upper, strict=True):
-                low = at_near if np.isneginf(lower).all() else np.maximum(at_near, special.ndtr((lower[..., None, :] - theta) / se))
-                high = at_far if np.isposinf(upper).all() else np.minimum(at_far, special.ndtr((upper[..., None, :] - theta) / se))
+                low = (
+                    at_near
+                    if np.isneginf(lower).all()
+                    else np.maximum(at_near, special.ndtr((lower[..., None, :] - theta) / se))
+                )
+                high = (
+                    at_far
+                    if np.isposinf(upper).all()
+                    else np.minimum(at_far, special.ndtr((upper[..., None, :] - theta) / se))
+                )
                 total += (np.maximum(high - low, 0.0) * self.weight[:, None, None, :]).sum(axis=-1)
         return total
 
@@ -120,7 +128,7 @@ class NormalLine(Outcomes):
 def critical_value(df: FloatArray, level: float) -> FloatArray:
     """Upper `level` point of Student t with df degrees of freedom, of the standard normal where df is infinite."""
     finite = np.isfinite(df)
-    return np.where(finite, -special.stdtrit(np.where(finite, df, 1.0), level), -special.ndtri(level))
+    return np.asarray(np.where(finite, -special.stdtrit(np.where(finite, df, 1.0), level), -special.ndtri(level)))
 
 
 @final
@@ -147,4 +155,3 @@ class NormalAnalysis(Analysis):
         if side == "two":
             return np.asarray(2 * law.sf(np.abs(statistic)))
         return np.asarray(law.sf(statistic) if side == "higher" else law.cdf(statistic))
-

@@ -25,8 +25,8 @@ TIE = 1 + 1e-10  # a p-value equal to the level rejects, whatever the last bits 
 class OneProportion(Design):
     """x of n show the property; the effect is the proportion itself, and the null is a proportion.
 
-    `exact`: binomial test, two-sided by the central or the minimum-likelihood p-value (Clopper and Pearson 1934; Sterne 1954).
-    `z`: score test, (x / n - null) / sqrt(null (1 - null) / n), on exactly enumerated counts.
+    `exact`: binomial test, two-sided by the central or the minimum-likelihood p-value (Clopper and Pearson 1934;
+    Sterne 1954). `z`: score test, (x / n - null) / sqrt(null (1 - null) / n), on exactly enumerated counts.
     """
 
     family: ClassVar[str] = "one_proportion"
@@ -138,9 +138,13 @@ class BinomialCount(Outcomes):
 
     @staticmethod
     def _least_likely(n: int, value: float, level: float) -> tuple[float, float]:
-        """Bounds below and above which the sum of all probabilities no larger than the count's own is within the level."""
+        """Bounds below and above which the sum of all probabilities no larger than the count's own is within the
+        level.
+        """
         x = np.arange(n + 1.0)
-        pmf = np.exp(binomial.log_choose(np.asarray(float(n)), x) + special.xlogy(x, value) + special.xlog1py(n - x, -value))
+        pmf = np.exp(
+            binomial.log_choose(np.asarray(float(n)), x) + special.xlogy(x, value) + special.xlog1py(n - x, -value)
+        )
         order = np.argsort(pmf)
         running = np.concatenate([[0.0], np.cumsum(pmf[order])])
         p = running[np.searchsorted(pmf[order], pmf * (1 + 1e-7), side="right")]
@@ -173,7 +177,9 @@ class BinomialCount(Outcomes):
         for region in regions:
             for lower, upper in zip(region.lower, region.upper, strict=True):
                 first, last = np.maximum(lower, low), np.minimum(upper, high)
-                total += np.where(first < last, binomial.cdf(last - 0.5, n, effect) - binomial.cdf(first - 0.5, n, effect), 0.0)
+                total += np.where(
+                    first < last, binomial.cdf(last - 0.5, n, effect) - binomial.cdf(first - 0.5, n, effect), 0.0
+                )
         return total
 
     def measure(self, effect: FloatArray, lower: FloatArray, upper: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -182,7 +188,11 @@ class BinomialCount(Outcomes):
         first, last = np.clip(first, 0, n + 1), np.clip(last, -1, n)
         mass = binomial.between(first, last, n, effect)
         # E[X; first <= X <= last] = n p P(first - 1 <= X' <= last - 1), X' among n - 1
-        fewer = np.where(n > 1, binomial.between(np.maximum(first - 1, 0), last - 1, np.maximum(n - 1, 1), effect), (first <= 1) & (last >= 1))
+        fewer = np.where(
+            n > 1,
+            binomial.between(np.maximum(first - 1, 0), last - 1, np.maximum(n - 1, 1), effect),
+            (first <= 1) & (last >= 1),
+        )
         return mass, effect * fewer - self.null * mass
 
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
@@ -199,7 +209,7 @@ class BinomialCount(Outcomes):
             counts = np.arange(self.n.max() + 1) / n
             steps = (np.where(counts <= 1, counts, self.null) - self.null) / multiple[:, None, None]
             points += [self.null + steps, self.null - steps]
-        return np.clip(np.nan_to_num(np.concatenate(points, axis=2), nan=self.null), 0.0, 1.0)
+        return np.asarray(np.clip(np.nan_to_num(np.concatenate(points, axis=2), nan=self.null), 0.0, 1.0))
 
 
 @final
@@ -220,7 +230,9 @@ class BinomialAnalysis(Analysis):
 
         if not self.exact:
             z = (self.estimate - value) / np.sqrt(value * (1 - value) / self.n)
-            return np.asarray(2 * stats.norm.sf(np.abs(z)) if side == "two" else stats.norm.sf(z if side == "higher" else -z))
+            return np.asarray(
+                2 * stats.norm.sf(np.abs(z)) if side == "two" else stats.norm.sf(z if side == "higher" else -z)
+            )
         if side == "two" and tails == "minimum_likelihood":
             seen, back = np.unique(self.count, return_inverse=True)
             return np.array([stats.binomtest(int(x), self.n, value).pvalue for x in seen])[back]

@@ -7,7 +7,7 @@ from typing import final
 import numpy as np
 from scipy import special
 
-from bayesdesign.core.arrays import BoolArray, FloatArray
+from bayesdesign.core.arrays import BoolArray, FloatArray, IntArray
 from bayesdesign.core.binomial import log_choose_row
 from bayesdesign.core.errors import NotOffered
 from bayesdesign.core.region import Region
@@ -30,8 +30,8 @@ def IDENTITY(target: FloatArray) -> FloatArray:  # noqa: N802 - a constant that 
 class TwoCounts(Outcomes):
     """x of sizes[0] treated and y of sizes[1] controls; estimate = transform(x, sizes[0]) - transform(y, sizes[1]).
 
-    One sample size at a time (N = 1). For each y the tests reject beyond one x on either side, found by bisection; that they do
-    is proved for the conditional test and checked by full enumeration in the tests for the z tests.
+    One sample size at a time (N = 1). For each y the tests reject beyond one x on either side, found by bisection;
+    that they do is proved for the conditional test and checked by full enumeration in the tests for the z tests.
     """
 
     sizes: tuple[float, float]
@@ -86,7 +86,9 @@ class TwoCounts(Outcomes):
         return int(high[0] - low[0]) + len(self._y())
 
     def _count_of(self, estimate: FloatArray, y: FloatArray) -> FloatArray:
-        """Real x whose estimate (with y on the last axis) is this; outside 0..n beyond the least or largest estimate."""
+        """Real x whose estimate (with y on the last axis) is this; outside 0..n beyond the least or largest
+        estimate.
+        """
         target = estimate + self.transform(y, self.sizes[1])
         ends = self.transform(np.array([0.0, self.sizes[0]]), self.sizes[0])
         x = self.sizes[0] * self.inverse(target)
@@ -111,8 +113,9 @@ class TwoCounts(Outcomes):
         return self._count_of(self.null - reach, y) - slack, self._count_of(self.null + reach, y) + slack
 
     def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
-        # Only a probability is asked for, and of many control counts every k-th says enough: the sum over them is smooth.
-        # Without a panel for every jump, the average over a jump's surroundings stands for it (see `_CountTails.smooth`).
+        # Only a probability is asked for, and of many control counts every k-th says enough: the sum over them is
+        # smooth. Without a panel for every jump, the average over a jump's surroundings stands for it (see
+        # `_CountTails.smooth`).
         y = self._y()
         picks = np.arange(0, len(y), max(1, len(y) // THINNED))
         log_choose_y = log_choose_row(int(self.sizes[1]))[y[picks].astype(np.int64)]
@@ -127,7 +130,9 @@ class TwoCounts(Outcomes):
                 for lower, upper in zip(region.lower, region.upper, strict=True):
                     ends = (np.broadcast_to(b[0, 0], y.shape)[picks][keep] for b in (lower, upper))
                     lower_end, upper_end = np.maximum(next(ends), low), np.minimum(next(ends), high)
-                    mass = tails.between(lower_end, upper_end)[0] if self.stepped else tails.smooth(lower_end, upper_end)
+                    mass = (
+                        tails.between(lower_end, upper_end)[0] if self.stepped else tails.smooth(lower_end, upper_end)
+                    )
                     total[0, m] += mass @ pmf_y[keep] / pmf_y.sum()
         return total
 
@@ -172,10 +177,14 @@ class TwoCounts(Outcomes):
         effects = self.effect_of(treatment, control[:, None])
         if multiple is not None and not self.stepped:
             gaps = np.abs(self.working_effect(effects) - self.null) / multiple
-            effects = np.concatenate([effects, self.natural_effect(self.null + gaps), self.natural_effect(self.null - gaps)], axis=1)
+            effects = np.concatenate(
+                [effects, self.natural_effect(self.null + gaps), self.natural_effect(self.null - gaps)], axis=1
+            )
         if multiple is not None and self.stepped:
             steps = np.arange(-self.sizes[0], self.sizes[0] + 1) / self.sizes[0] - self.null_effect
-            effects = np.concatenate([effects, np.broadcast_to(self.null_effect + steps / multiple, (len(control), len(steps)))], axis=1)
+            effects = np.concatenate(
+                [effects, np.broadcast_to(self.null_effect + steps / multiple, (len(control), len(steps)))], axis=1
+            )
         return effects[None]
 
 
@@ -197,11 +206,11 @@ class _CountTails:
         low, high = _window(n, share)
         width = int((high - low).max()) + 1
         start = np.minimum(low, n + 1 - width)[:, None]
-        x = start + np.arange(width)
+        x = start + np.arange(float(width))
         pmf = _pmf(log_choose_row(int(n))[x.astype(np.int64)], x, n, share[:, None])
         if transform is None:
-            below = _up(pmf)
-            return cls(start, below, below, below, below)
+            below, above = _up(pmf), _down(pmf)
+            return cls(start, below, above, below, above)
         value = pmf * transform(x, n)
         return cls(start, _up(pmf), _down(pmf), _up(value), _down(value))
 
@@ -221,7 +230,9 @@ class _CountTails:
         return mass, np.take_along_axis(self.below_moment, last, 1) - np.take_along_axis(self.below_moment, first, 1)
 
     def smooth(self, lower: FloatArray, upper: FloatArray) -> FloatArray:
-        """P(lower < x < upper) with every jump spread evenly over the unit around it; exact for bounds between whole numbers."""
+        """P(lower < x < upper) with every jump spread evenly over the unit around it; exact for bounds between whole
+        numbers.
+        """
         return np.maximum(self._interpolated(upper) - self._interpolated(np.minimum(lower, upper)), 0.0)
 
     def _interpolated(self, bound: FloatArray) -> FloatArray:
@@ -230,7 +241,7 @@ class _CountTails:
         left, right = (np.take_along_axis(self.below, at, 1) for at in (k, k + 1))
         return np.asarray(left + (place - k) * (right - left))
 
-    def _index(self, count: FloatArray) -> np.ndarray:  # type: ignore[type-arg]
+    def _index(self, count: FloatArray) -> IntArray:
         return np.clip(count - self.start, 0, self.below.shape[1] - 1).astype(np.int64)
 
 
@@ -241,7 +252,7 @@ def _window(n: float, share: FloatArray) -> tuple[FloatArray, FloatArray]:
 
 
 def _pmf(log_choose_x: FloatArray, x: FloatArray, n: float, share: FloatArray | float) -> FloatArray:
-    return np.exp(log_choose_x + special.xlogy(x, share) + special.xlog1py(n - x, -np.asarray(share)))
+    return np.asarray(np.exp(log_choose_x + special.xlogy(x, share) + special.xlog1py(n - x, -np.asarray(share))))
 
 
 def _up(values: FloatArray) -> FloatArray:

@@ -64,10 +64,19 @@ effect = { distribution = "normal", mean = 2.5, sd = 1.5 }
         check_sizes(self.n_per_group, self.n_treatment, self.n_control, 2)
         own = (self.sd_treatment is not None, self.sd_control is not None)
         if (self.sd is not None) == any(own) or (any(own) and not all(own)):
-            raise Invalid([Fault(where="sd", problem="sds do not fit", allowed="give sd, or sd_treatment and sd_control")])
+            raise Invalid(
+                [Fault(where="sd", problem="sds do not fit", allowed="give sd, or sd_treatment and sd_control")]
+            )
         if any(own) and self.analysis == "t":
             raise Invalid(
-                [Fault(where="analysis", problem="the pooled t test assumes one sd", got="'t'", allowed="use 'welch' or 'z', or give sd")]
+                [
+                    Fault(
+                        where="analysis",
+                        problem="the pooled t test assumes one sd",
+                        got="'t'",
+                        allowed="use 'welch' or 'z', or give sd",
+                    )
+                ]
             )
 
     @property

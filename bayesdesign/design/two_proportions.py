@@ -26,9 +26,10 @@ type Scale = Literal["difference", "ratio", "odds_ratio"]
 class TwoProportions(Design):
     """Shares with an event, treatment against control; the effect is their difference, ratio or odds ratio.
 
-    `z`: score test with pooled variance; `z_unpooled`: Wald test; `exact`: Fisher's exact test (Fisher 1935). All three are
-    enumerated exactly over both counts. On every scale the test is the one of equal proportions. Counts of zero (and full
-    counts, for odds) take half an event more when an estimate on a log scale is needed (Haldane 1956; Anscombe 1956).
+    `z`: score test with pooled variance; `z_unpooled`: Wald test; `exact`: Fisher's exact test (Fisher 1935). All
+    three are enumerated exactly over both counts. On every scale the test is the one of equal proportions. Counts of
+    zero (and full counts, for odds) take half an event more when an estimate on a log scale is needed (Haldane 1956;
+    Anscombe 1956).
     """
 
     family: ClassVar[str] = "two_proportions"
@@ -44,8 +45,8 @@ family = "two_proportions"
 n_per_group = 150 # number of units in each group
 # n_treatment = 200 # number of treated units, with n_control instead of n_per_group
 # n_control = 100 # number of control units, with n_treatment instead of n_per_group
-control = { distribution = "beta", mean = 0.3, size = 100 } # the proportion in the control group: a number or a distribution
-# scale = "difference" # the effect: "difference" of proportions, "ratio" or "odds_ratio" (treatment minus, or over, control)
+control = { distribution = "beta", mean = 0.3, size = 100 } # the control group's proportion: number or distribution
+# scale = "difference" # the effect: "difference" of proportions, or "ratio" or "odds_ratio", treatment over control
 # analysis = "z" # the test: "z" (pooled), "exact" (Fisher) or "z_unpooled"
 
 [prior]
@@ -124,7 +125,8 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
             return np.asarray(control + effect)
         if self.scale == "ratio":
             return np.asarray(control * effect)
-        return np.asarray(effect * control / (1 - control + effect * control))
+        with np.errstate(divide="ignore"):  # the odds ratio may be 0 or infinite
+            return np.asarray(1 / (1 + (1 - control) / (effect * control)))
 
     def effect_of(self, treatment: FloatArray, nuisance: Mapping[str, Any]) -> FloatArray:
         control = nuisance["control"]
@@ -135,9 +137,7 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
                 return np.asarray(treatment / control)
             return np.asarray(treatment * (1 - control) / ((1 - treatment) * control))
 
-    def outcomes(
-        self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy
-    ) -> TwoCounts:
+    def outcomes(self, n: FloatArray, nuisance: Mapping[str, FloatArray], null: float, accuracy: Accuracy) -> TwoCounts:
         del accuracy  # both counts are enumerated
         sizes = tuple(float(size[0]) for size in self._sizes(n))
         return TwoCounts(
@@ -188,8 +188,9 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
     def _need_equality(self, value: float) -> None:
         if value != self.default_null:
             raise NotOffered(
-                f"analysis '{self.analysis}' tests equal proportions on the {self.scale.replace('_', ' ')} scale, not a null of "
-                f"{value:g}; use null = {self.default_null:g}, or analysis = 'z_unpooled' on the difference or ratio scale"
+                f"analysis '{self.analysis}' tests equal proportions on the {self.scale.replace('_', ' ')} scale, "
+                f"not a null of {value:g}; use null = {self.default_null:g}, or analysis = 'z_unpooled' on the "
+                "difference or ratio scale"
             )
 
     def forward(
@@ -208,7 +209,9 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
             return control + effect
         return control * effect if self.scale == "ratio" else effect * control / (1 - control + effect * control)
 
-    def analyse(self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int) -> "TwoCountsAnalysis":
+    def analyse(
+        self, data: Mapping[str, FloatArray], nuisance: Mapping[str, FloatArray], n: int
+    ) -> "TwoCountsAnalysis":
         treated, control = (int(size) for size in self._sizes(np.asarray(float(n))))
         return TwoCountsAnalysis(data["treated_events"], data["control_events"], treated, control, self)
 
@@ -237,20 +240,18 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
         def log_probability(effect: Any) -> Any:
             share = self._symbolic_treatment(effect, nuisance["control"])
             given_x = pm.math.dot(chosen, pm.math.exp(log_binomial(pm, y, control, nuisance["control"])))
-            return pm.math.logsumexp(
-                log_binomial(pm, x, treated, share) + pm.math.log(given_x + least), keepdims=False
-            )
+            return pm.math.logsumexp(log_binomial(pm, x, treated, share) + pm.math.log(given_x + least), keepdims=False)
 
         return log_probability
 
 
 def _log_share(x: FloatArray, n: float) -> FloatArray:
-    return np.log(np.where(x <= 0, 0.5 / (n + 1), x / n))
+    return np.asarray(np.log(np.where(x <= 0, 0.5 / (n + 1), x / n)))
 
 
 def _log_odds(x: FloatArray, n: float) -> FloatArray:
     share = np.where((x <= 0) | (x >= n), (x + 0.5) / (n + 1), x / n)
-    return np.log(share / (1 - share))
+    return np.asarray(np.log(share / (1 - share)))
 
 
 TRANSFORMS = {"difference": lambda x, n: x / n, "ratio": _log_share, "odds_ratio": _log_odds}
@@ -287,17 +288,20 @@ class TwoCountsAnalysis(Analysis):
                 gap = p - times * q - minus
             with np.errstate(divide="ignore", invalid="ignore"):
                 z = np.nan_to_num(gap / np.sqrt(variance), posinf=np.inf, neginf=-np.inf)
-            return np.asarray(2 * stats.norm.sf(np.abs(z)) if side == "two" else stats.norm.sf(z if side == "higher" else -z))
+            return np.asarray(
+                2 * stats.norm.sf(np.abs(z)) if side == "two" else stats.norm.sf(z if side == "higher" else -z)
+            )
         # one number for each table: np.unique over pairs takes twelve times as long
         key = self.treated.astype(np.int64) * (self.n_control + 1) + self.control.astype(np.int64)
         seen = np.unique(key)
         back = np.searchsorted(seen, key)
         x, y = np.divmod(seen, self.n_control + 1)
         if side == "two" and tails == "minimum_likelihood":
-            p = [
-                stats.fisher_exact([[a, self.n_treated - a], [b, self.n_control - b]]).pvalue for a, b in zip(x, y, strict=True)
+            exact = [
+                stats.fisher_exact([[a, self.n_treated - a], [b, self.n_control - b]]).pvalue
+                for a, b in zip(x, y, strict=True)
             ]
-            return np.asarray(p)[back]
+            return np.asarray(exact)[back]
         law = stats.hypergeom(self.n_treated + self.n_control, self.n_treated, x + y)
         higher, lower = law.sf(x - 1), law.cdf(x)
         both = np.minimum(1.0, 2 * np.minimum(higher, lower))

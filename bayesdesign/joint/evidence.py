@@ -21,22 +21,24 @@ def decision_evidence(study: Study, decision: str) -> Evidence:
     def likelihood(setting: Setting, effect: FloatArray) -> FloatArray:
         probability = setting.decisions(effect)[0]
         if index < len(study.rule.decisions) - 1:
-            return probability[..., index]
+            return np.asarray(probability[..., index])
         return np.maximum(1 - probability.sum(axis=-1), 0.0)
 
     return Evidence(kind="decision", likelihood=likelihood)
 
 
 def estimate_evidence(study: Study, estimate: float, se: float) -> Evidence:
-    """An estimate (natural units) with its standard error (on the log scale for ratios), taken as normal around the truth."""
+    """An estimate (natural units) with its standard error (on the log scale for ratios), taken as normal around the
+    truth.
+    """
     centre = float(study.design.working(np.asarray(estimate)))
     marks = centre + se * np.array([-9.0, -6.0, -3.0, -1.0, 1.0, 3.0, 6.0, 9.0])
     cuts = np.exp(marks) if study.design.ratio_scale else marks
 
-    def likelihood(setting: Setting, effect: FloatArray) -> FloatArray:
+    def likelihood(_: Setting, effect: FloatArray) -> FloatArray:
         with np.errstate(divide="ignore"):
             z = (study.design.working(effect) - centre) / se
-        return np.exp(-z * z / 2) / (se * np.sqrt(2 * np.pi))
+        return np.asarray(np.exp(-z * z / 2) / (se * np.sqrt(2 * np.pi)))
 
     return Evidence(kind="estimate", likelihood=likelihood, cuts=tuple(map(float, cuts)))
 
@@ -44,9 +46,9 @@ def estimate_evidence(study: Study, estimate: float, se: float) -> Evidence:
 def p_value_evidence(study: Study, n: int | None, p: float, decimals: int, decision: str | None) -> Evidence:
     """A p-value, as the probability that the study's own test gives one in a narrow band around it.
 
-    With a continuous statistic the band is narrow enough to stand for its density. Counts give only some p-values; then the band is
-    what rounds to the printed one, and a p-value that no outcome can give is a fault. A two-sided p-value does not tell the side;
-    `decision` may.
+    With a continuous statistic the band is narrow enough to stand for its density. Counts give only some p-values;
+    then the band is what rounds to the printed one, and a p-value that no outcome can give is a fault. A two-sided
+    p-value does not tell the side; `decision` may.
     """
     printed = 0.5 * 10.0**-decimals
     for half in (NARROW * p, printed):

@@ -76,7 +76,12 @@ def set_up(study: Study, n: Sequence[int | None], level: int) -> Setting:
     sizes = np.array([1.0 if k is None else float(k) for k in n])
     outcomes = study.design.outcomes(sizes, nuisance, study.null, accuracy)
     return Setting(
-        study=study, n=tuple(n), level=level, nuisance=nuisance, nuisance_weight=weight, outcomes=outcomes,
+        study=study,
+        n=tuple(n),
+        level=level,
+        nuisance=nuisance,
+        nuisance_weight=weight,
+        outcomes=outcomes,
         regions=study.rule.regions(outcomes, study.null),
     )
 
@@ -100,8 +105,8 @@ class Truths:
 def truth_nodes(
     setting: Setting, cuts: Sequence[float] = (), multiple: FloatArray | None = None, order: int | None = None
 ) -> Truths:
-    """Nodes of the joint prior, with panels that end on the null, the state boundaries, `cuts` and the bends of the power curve
-    (with `multiple`, on those of the probability within that multiple of the effect's distance too)."""
+    """Nodes of the joint prior, with panels that end on the null, the state boundaries, `cuts` and the bends of the
+    power curve (with `multiple`, on those of the probability within that multiple of the effect's distance too)."""
     study = setting.study
     low, high = setting.feasible
     marks = setting.outcomes.landmarks(setting.regions, multiple)
@@ -114,10 +119,13 @@ def truth_nodes(
     # impossible pairs are cut off and the rest scaled up (the study was refused if more than a trace is cut)
     weight = weight / weight.sum(axis=(1, 2), keepdims=True) * (1 - study.prior.probability_null)
     effect = setting.to_effect(variable)
-    # nodes without weight (empty panels, far tails) all become the null, so that a design need not work them out one by one
+    # nodes without weight (empty panels, far tails) all become the null, so that a design need not work them out one
+    # by one
     effect = np.where(weight > WEIGHTLESS, effect, study.null)
     if study.prior.probability_null > 0:
-        null_weight = study.prior.probability_null * np.broadcast_to(setting.nuisance_weight[:, None], (rows, columns, 1))
+        null_weight = study.prior.probability_null * np.broadcast_to(
+            setting.nuisance_weight[:, None], (rows, columns, 1)
+        )
         effect = np.concatenate([np.full((rows, columns, 1), study.null), effect], axis=2)
         weight = np.concatenate([null_weight, weight], axis=2)
     return Truths(effect=effect, weight=weight)

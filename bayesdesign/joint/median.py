@@ -19,10 +19,11 @@ CLOSE = 1e-11  # the same for the last round
 
 
 def median_multiple(setting: "Setting", near: FloatArray | None = None) -> FloatArray:
-    """Least multiple c with P(claim, |estimate - null| <= c |distance|, not exactly null) at half of P(claim, not exactly null), (N,).
+    """Least multiple c with P(claim, |estimate - null| <= c |distance|, not exactly null) at half of P(claim, not
+    exactly null), (N,).
 
-    Sought in rounds, each with panels that end on the kinks at the multiple found before, from `near` if something is known. NaN where nothing is claimed,
-    infinite where no multiple suffices.
+    Sought in rounds, each with panels that end on the kinks at the multiple found before, from `near` if something
+    is known. NaN where nothing is claimed, infinite where no multiple suffices.
     """
     from bayesdesign.joint.integration import truth_nodes
 

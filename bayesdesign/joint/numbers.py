@@ -28,7 +28,9 @@ class Number:
 @final
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Numbers:
-    """One route's answer for N sizes: quantities by name, cell probabilities (N, S, D) with their errors, and the table."""
+    """One route's answer for N sizes: quantities by name, cell probabilities (N, S, D) with their errors, and the
+    table.
+    """
 
     by_name: dict[str, Number]
     cells: FloatArray

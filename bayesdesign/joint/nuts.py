@@ -91,9 +91,7 @@ def _sample(model: Any, seed: int) -> Any:
     import nutpie
 
     with warnings.catch_warnings():
-        warnings.simplefilter(
-            "ignore"
-        )  # of Numba and nutpie, about their own work; convergence is checked by numbers
+        warnings.simplefilter("ignore")  # of Numba and nutpie, about their own work; convergence is checked by numbers
         return nutpie.sample(
             nutpie.compile_pymc_model(model), draws=DRAWS, tune=TUNE, chains=CHAINS, cores=1, seed=seed,
             progress_bar=False, target_accept=0.95,
@@ -111,13 +109,9 @@ def check_convergence(chains: dict[str, FloatArray], divergences: int) -> Diagno
     if not r_hat <= R_HAT:
         raise Refused(f"NUTS: the chains disagree, R-hat {r_hat:.3f} exceeds {R_HAT}", advice)
     if not min(bulk, tail) >= LEAST_ESS:
-        raise Refused(
-            f"NUTS: effective sample size below {LEAST_ESS:.0f} (bulk {bulk:.0f}, tail {tail:.0f})", advice
-        )
+        raise Refused(f"NUTS: effective sample size below {LEAST_ESS:.0f} (bulk {bulk:.0f}, tail {tail:.0f})", advice)
     if divergences:
-        raise Refused(
-            f"NUTS: {divergences} divergent transitions, part of the posterior was not reached", advice
-        )
+        raise Refused(f"NUTS: {divergences} divergent transitions, part of the posterior was not reached", advice)
     first = next(iter(chains.values()))
     return Diagnostics(
         r_hat=r_hat,
@@ -151,8 +145,7 @@ def checked_posterior(
         evidence = Observed(estimate=estimate, standard_error=se)
     else:
         raise NotOffered(
-            "NUTS takes a decision, or an estimate and its standard error, not a p-value; "
-            "use --route integration"
+            "NUTS takes a decision, or an estimate and its standard error, not a p-value; use --route integration"
         )
     drawn = posterior_by_nuts(study, evidence, seed, n, mass)
     low, high = drawn.interval
@@ -210,13 +203,9 @@ def _summary(
     tails = [_weighted_quantile(effects, share, p) for p in ((1 - mass) / 2, 0.5, (1 + mass) / 2)]
     known = isinstance(given, Observed)  # a normal likelihood gives every prior a mean and an sd
     return DrawnPosterior(
-        state_probabilities={
-            name: mean((state == i).astype(float)) for i, name in enumerate(study.states.names)
-        },
+        state_probabilities={name: mean((state == i).astype(float)) for i, name in enumerate(study.states.names)},
         effect_mean=centre if known or np.isfinite(belief.expectation()) else None,
-        effect_sd=Estimated(sd, variance.mcse / (2 * sd))
-        if known or np.isfinite(belief.deviation())
-        else None,
+        effect_sd=Estimated(sd, variance.mcse / (2 * sd)) if known or np.isfinite(belief.deviation()) else None,
         effect_median=tails[1],
         interval=(tails[0], tails[2]),
         mass=mass,

@@ -65,9 +65,7 @@ def posterior_model(study: Study, given: Decided | Observed, n: int | None) -> A
             variable = _latent(pm, "variable", belief, _range(study))
             parts.append((_effect(study, variable, nuisance), real * (1 - masses.sum())))
         if not model.free_RVs:
-            raise NotOffered(
-                "nothing here is uncertain on a continuous scale for NUTS; use --route integration"
-            )
+            raise NotOffered("nothing here is uncertain on a continuous scale for NUTS; use --route integration")
         likelihood = _likelihood(pm, study, given, nuisance, n)
         logs = pm.math.stack([np.log(np.float64(weight)) + likelihood(effect) for effect, weight in parts])
         pm.Potential("given", pm.math.logsumexp(logs, keepdims=False))
@@ -87,9 +85,7 @@ def _likelihood(
     match given:
         case Decided(decision=name):
             if name not in rule.decisions:
-                raise NotOffered(
-                    f"'{name}' is not a decision of this rule; it has {', '.join(rule.decisions)}"
-                )
+                raise NotOffered(f"'{name}' is not a decision of this rule; it has {', '.join(rule.decisions)}")
             index = rule.decisions.index(name)
 
             def decides(analysis: Any) -> Any:
@@ -166,9 +162,7 @@ def _latent(pm: Any, name: str, belief: Distribution, bounds: tuple[float, float
     low, high = max(belief.support[0], bounds[0]), min(belief.support[1], bounds[1])
     first, middle, last = (float(q) for q in belief.ppf(np.array([0.16, 0.5, 0.84])))
     free = pm.Flat(f"free_{name}", initval=np.float64(0))
-    value, log_slope = _mapped(
-        pm, free, (low, high), (first, middle, last), heavy=not np.isfinite(belief.deviation())
-    )
+    value, log_slope = _mapped(pm, free, (low, high), (first, middle, last), heavy=not np.isfinite(belief.deviation()))
     pm.Potential(f"prior_{name}", belief.log_density(pm, value) + log_slope)
     return value
 
@@ -192,6 +186,4 @@ def _mapped(
     a, centre, b = (float(np.log(s / (1 - s))) for s in share)
     logit = np.float64(centre) + np.float64(np.clip((b - a) / 2, 1e-3, 10.0)) * free
     inside = pm.math.sigmoid(logit)
-    return np.float64(low) + np.float64(high - low) * inside, pm.math.log(inside) + pm.math.log(
-        pm.math.sigmoid(-logit)
-    )
+    return np.float64(low) + np.float64(high - low) * inside, pm.math.log(inside) + pm.math.log(pm.math.sigmoid(-logit))

@@ -19,7 +19,9 @@ LEAST_LIKELIHOOD = 1e-250  # evidence with less probability than this cannot be 
 @final
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Evidence:
-    """What was learned: a likelihood of the truths, the regions whose edges bend it, and effects on which panels must end."""
+    """What was learned: a likelihood of the truths, the regions whose edges bend it, and effects on which panels
+    must end.
+    """
 
     kind: str  # "decision" | "estimate" | "p_value"
     likelihood: Callable[[Setting, FloatArray], FloatArray]
@@ -48,7 +50,9 @@ class Posterior:
     errors: dict[str, float]
 
 
-def posterior_by_integration(study: Study, n: int | None, evidence: Evidence, mass: float, tolerance: float) -> Posterior:
+def posterior_by_integration(
+    study: Study, n: int | None, evidence: Evidence, mass: float, tolerance: float
+) -> Posterior:
     """Posterior by integration, refined until its numbers stand still.
 
     Raises:
@@ -122,9 +126,14 @@ def _atoms(study: Study) -> FloatArray:
 
 
 def _quantiles(
-    weigh: Callable[[Sequence[float]], tuple[FloatArray, FloatArray]], atoms: FloatArray, ranks: FloatArray, near: FloatArray | None
+    weigh: Callable[[Sequence[float]], tuple[FloatArray, FloatArray]],
+    atoms: FloatArray,
+    ranks: FloatArray,
+    near: FloatArray | None,
 ) -> tuple[float, float, float]:
-    """Quantiles of the effect: bracketed close to `near` or by the nodes, then sought with panels that end on the candidates."""
+    """Quantiles of the effect: bracketed close to `near` or by the nodes, then sought with panels that end on the
+    candidates.
+    """
     effect, weight = weigh(tuple(atoms))
 
     def excess(points: FloatArray) -> FloatArray:
@@ -141,7 +150,11 @@ def _quantiles(
 
 
 def _bracket(
-    excess: Callable[[FloatArray], FloatArray], effect: FloatArray, weight: FloatArray, ranks: FloatArray, near: FloatArray | None
+    excess: Callable[[FloatArray], FloatArray],
+    effect: FloatArray,
+    weight: FloatArray,
+    ranks: FloatArray,
+    near: FloatArray | None,
 ) -> tuple[FloatArray, FloatArray]:
     """Effects on either side of each quantile: close to `near` if that holds, else a few nodes apart."""
 

@@ -16,8 +16,9 @@ FLAT = 1e-9  # power that varies less over a cell is a jump of its distribution
 def power_quantiles(setting: "Setting", levels: tuple[float, ...]) -> FloatArray:
     """Quantiles (N, P) of P(F | effect, nuisance) given that the effect is not exactly null.
 
-    Power is interpolated linearly in prior probability between the quantiles of the prior, at each nuisance node. The levels
-    themselves are among the grid points, so that the answer is exact where power is monotone and no nuisance is uncertain.
+    Power is interpolated linearly in prior probability between the quantiles of the prior, at each nuisance node.
+    The levels themselves are among the grid points, so that the answer is exact where power is monotone and no
+    nuisance is uncertain.
     """
     from bayesdesign.joint.integration import distances
 
@@ -39,7 +40,9 @@ def power_quantiles(setting: "Setting", levels: tuple[float, ...]) -> FloatArray
     cells = (mass / mass.sum())[:, None] * np.diff(grid)
     at_null = distances(study, effect)[1]
     real = np.where(at_null[..., 1:] & at_null[..., :-1], 0.0, cells)  # without an atom exactly at the null
-    return np.array([_quantiles(p, c if c.any() else cells, np.asarray(levels)) for p, c in zip(power, real, strict=True)])
+    return np.array(
+        [_quantiles(p, c if c.any() else cells, np.asarray(levels)) for p, c in zip(power, real, strict=True)]
+    )
 
 
 def _grid(setting: "Setting", levels: tuple[float, ...]) -> FloatArray:

@@ -1,4 +1,6 @@
-"""The integration route with its error: the table is computed on finer and finer nodes until the readings stand still."""
+"""The integration route with its error: the table is computed on finer and finer nodes until the readings stand
+still.
+"""
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
@@ -71,7 +73,9 @@ def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float
 
 
 def _no_luck(numbers: dict[str, Number], last: dict[str, Number]) -> dict[str, Number]:
-    """With counts the change from level to level is partly chance, so one small change does not count against a large one before."""
+    """With counts the change from level to level is partly chance, so one small change does not count against a
+    large one before.
+    """
     return {
         name: replace(number, error=np.fmax(number.error, last[name].error * MEMORY)) if name in last else number
         for name, number in numbers.items()
@@ -83,7 +87,9 @@ def _all_settled(numbers: dict[str, Number], goal: float) -> bool:
 
 
 def _settled(number: Number, goal: float) -> BoolArray:
-    """Whether the error is within the goal, relative to the number, or cannot be brought there because its condition is rare."""
+    """Whether the error is within the goal, relative to the number, or cannot be brought there because its condition
+    is rare.
+    """
     scale = np.maximum(1.0, np.abs(np.nan_to_num(number.value))) / np.maximum(np.minimum(number.weight, 1.0), 1e-4)
     return np.asarray(~np.isfinite(number.value) | (number.error <= goal * scale))
 
@@ -94,7 +100,9 @@ def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio]) -> dict[str, N
         value, old = ratio.value[:, 0], before[name].value[:, 0]
         weight = ratio.denominator[:, 0]
         with np.errstate(invalid="ignore", divide="ignore"):
-            rounding = ROUNDING * np.maximum(1.0, np.abs(value))  # sums of positive terms keep their digits, rare or not
+            rounding = ROUNDING * np.maximum(
+                1.0, np.abs(value)
+            )  # sums of positive terms keep their digits, rare or not
             numbers[name] = Number(value, np.abs(value - old) + rounding, ratio.why_null, weight)
     return numbers
 
@@ -130,7 +138,9 @@ def _distributions(study: Study, main: Refined) -> dict[str, Number]:
         why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
         ratio = missing(len(ratio.value), why)
     fine, coarse = set_up(study, main.joint.n, main.level), set_up(study, main.joint.n, main.level - 1)
-    if fine.outcomes.rough_error or fine.outcomes.stepped:  # more nodes cost much and gain little where the probability jumps at every count
+    if (
+        fine.outcomes.rough_error or fine.outcomes.stepped
+    ):  # more nodes cost much and gain little where the probability jumps at every count
         fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
     power = power_quantiles(fine, POWER_LEVELS)
     change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING

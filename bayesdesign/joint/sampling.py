@@ -104,9 +104,7 @@ class Run:
 def _run(study: Study, n: int | None, seed: np.random.SeedSequence, draws: int) -> Run:
     """Draw the truths of all three blocks at once, then all their studies at once, and read the tables."""
     fixed = at_planning_value(study)
-    outer = inner = 2 * max(
-        1, int(np.sqrt(draws)) // 2
-    )  # even, so that the studies of one truth have two halves
+    outer = inner = 2 * max(1, int(np.sqrt(draws)) // 2)  # even, so that the studies of one truth have two halves
     without_spike = replace(study, prior=replace(study.prior, probability_null=0.0))
     nested = Block(study=without_spike, count=outer, real=_spread(study))
     blocks = [Block(study=study, count=draws), nested]
@@ -142,9 +140,7 @@ def _truths(blocks: Sequence[Block], seed: np.random.SeedSequence) -> list[Truth
     A pair of effect and nuisance that cannot exist is drawn anew, as the integration route leaves it out.
     """
     null, drawn = _prior_draws(blocks, [block.count for block in blocks], seed.spawn(1)[0])
-    usable = [
-        _usable(block, found) | at_null for block, found, at_null in zip(blocks, drawn, null, strict=True)
-    ]
+    usable = [_usable(block, found) | at_null for block, found, at_null in zip(blocks, drawn, null, strict=True)]
     truths = [
         Truths(effect=np.where(at_null, block.study.null, found.effect), nuisance=found.nuisance)
         for block, found, at_null in zip(blocks, drawn, null, strict=True)
@@ -193,10 +189,7 @@ def _prior_draws(
                 {
                     "null": pm.Bernoulli(f"null_{i}", p=np.float64(prior.probability_null), shape=(count,)),
                     "variable": prior.variable.random_variable(pm, f"variable_{i}", (count,)),
-                    **{
-                        f"by {k}": belief.random_variable(pm, f"{k}_{i}", (count,))
-                        for k, belief in nuisance.items()
-                    },
+                    **{f"by {k}": belief.random_variable(pm, f"{k}_{i}", (count,)) for k, belief in nuisance.items()},
                 }
             )
         flat = _draw([v for found in variables for v in found.values()], seed)
@@ -234,9 +227,7 @@ def _usable(block: Block, truths: Truths) -> BoolArray:
     return possible
 
 
-def _studies(
-    study: Study, n: int | None, parts: Sequence[Truths], seed: np.random.SeedSequence
-) -> list[Decided]:
+def _studies(study: Study, n: int | None, parts: Sequence[Truths], seed: np.random.SeedSequence) -> list[Decided]:
     """One study for every truth of every part, all drawn side by side along one axis, and decided."""
     import pymc as pm
 
@@ -346,9 +337,7 @@ def _stacked(tables: Sequence[Joint], rows: int) -> Joint:
         effect=stack("effect"),
         distance=stack("distance"),
         exactly_null=stack("exactly_null"),
-        nuisance={
-            name: np.concatenate([t.nuisance[name][:, :rows] for t in tables]) for name in first.nuisance
-        },
+        nuisance={name: np.concatenate([t.nuisance[name][:, :rows] for t in tables]) for name in first.nuisance},
         state=stack("state"),
         weight=np.full((len(tables), rows), 1 / rows),
         probability=stack("probability"),

@@ -1,4 +1,6 @@
-"""`Joint`: truths down, decisions across, a probability in each cell. Both routes fill it; every reading is taken from it."""
+"""`Joint`: truths down, decisions across, a probability in each cell. Both routes fill it; every reading is taken
+from it.
+"""
 
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -18,8 +20,10 @@ class Joint:
     """Axes: N sizes, T truths, D decisions. On the integration route a truth is a node, on the sampling route a draw.
 
     distance is effect minus null on the working scale, 0 exactly where the effect is exactly null. absolute is
-    E[|estimate - null|; decision | truth] on that scale, for every decision but the one left over (0 there: no reading asks for it). `median_multiple()` is the median of |estimate - null| / |distance| over claims
-    of an effect that is not exactly null, (N,); `power_quantiles(p)` the quantiles of P(F | truth) over truths not exactly null, (N, P).
+    E[|estimate - null|; decision | truth] on that scale, for every decision but the one left over (0 there: no
+    reading asks for it). `median_multiple()` is the median of |estimate - null| / |distance| over claims of an
+    effect that is not exactly null, (N,); `power_quantiles(p)` the quantiles of P(F | truth) over truths not exactly
+    null, (N, P).
     """
 
     n: tuple[int | None, ...]
@@ -39,7 +43,9 @@ class Joint:
     power_quantiles: Callable[[tuple[float, ...]], FloatArray] | None = None
 
     def dataset(self) -> "xr.Dataset":
-        """The table with labels: dimensions n, truth, decision; coordinates effect, distance, state, weight and nuisances."""
+        """The table with labels: dimensions n, truth, decision; coordinates effect, distance, state, weight and
+        nuisances.
+        """
         import xarray as xr
 
         truth = ("n", "truth")
@@ -68,8 +74,8 @@ class Joint:
 class Cells:
     """Sums of a joint table over its truths, from which every ratio reading is made; leading axes are kept.
 
-    by_state (..., S, D), by_side (..., 2, D) for truths not exactly null below and above it, absolute and distance (..., D): sums of
-    |estimate - null| and |distance| over truths not exactly null; limit (..., D); weight (..., S).
+    by_state (..., S, D), by_side (..., 2, D) for truths not exactly null below and above it, absolute and distance
+    (..., D): sums of |estimate - null| and |distance| over truths not exactly null; limit (..., D); weight (..., S).
     """
 
     by_state: FloatArray
@@ -93,7 +99,7 @@ def cells(joint: Joint, batches: int = 1) -> Cells:
         return values.reshape(len(values), batches, -1, *values.shape[2:])
 
     weight, probability = split(joint.weight), split(joint.probability)
-    state = np.eye(len(joint.states))[split(joint.state)]
+    state = np.eye(len(joint.states))[joint.state.reshape(len(joint.state), batches, -1)]
     real = split(np.where(joint.exactly_null, 0.0, joint.weight))
     below = split(np.asarray(joint.distance < 0, dtype=float))
     sides = np.stack([real * below, real * (1 - below)], axis=-1)

@@ -1,8 +1,8 @@
 """Readings that are ratios of sums over the joint table; every definition stands here once, for both routes.
 
-R is any claim of an effect, F the favourable decisions. Definitions: type S and exaggeration (type M) after Gelman and Carlin
-(2014), averaged over the prior as a ratio of expectations; assurance after Spiegelhalter and Freedman (1986) and O'Hagan,
-Stevens and Campbell (2005); false-positive risk after Wacholder et al. (2004).
+R is any claim of an effect, F the favourable decisions. Definitions: type S and exaggeration (type M) after Gelman
+and Carlin (2014), averaged over the prior as a ratio of expectations; assurance after Spiegelhalter and Freedman
+(1986) and O'Hagan, Stevens and Campbell (2005); false-positive risk after Wacholder et al. (2004).
 """
 
 from collections.abc import Callable
@@ -15,14 +15,15 @@ from bayesdesign.core.arrays import FloatArray
 from bayesdesign.joint.table import Cells
 from bayesdesign.study.study import Study
 
-
 LEAST = 1e-12  # a condition less likely than this is none: its sums are rounding
 
 
 @final
 @dataclass(frozen=True, slots=True)
 class Ratio:
-    """A reading numerator / denominator on the leading axes of the cells; `why_null` says what a zero denominator means."""
+    """A reading numerator / denominator on the leading axes of the cells; `why_null` says what a zero denominator
+    means.
+    """
 
     numerator: FloatArray
     denominator: FloatArray

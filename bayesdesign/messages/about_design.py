@@ -63,9 +63,7 @@ def _saw(c: Context) -> Values | None:
 def _few_for_approximation(c: Context) -> Values | None:
     if not str(getattr(c.study.design, "analysis", "")).startswith("z") or not c.shares:
         return None
-    group, (share, size) = min(
-        c.shares.items(), key=lambda item: item[1][1] * min(item[1][0], 1 - item[1][0])
-    )
+    group, (share, size) = min(c.shares.items(), key=lambda item: item[1][1] * min(item[1][0], 1 - item[1][0]))
     least = size * min(share, 1 - share)
     return {"count": f"{least:.2g}", "group": group} if least < 5 else None
 
@@ -81,9 +79,7 @@ def _no_events(c: Context) -> Values | None:
 def _level(c: Context) -> tuple[float, float] | None:
     """Chance of a claim exactly at the null, and the level the rule promises."""
     alpha = getattr(c.study.rule, "alpha", None)
-    actual = (
-        c.power(c.study.null) if alpha is not None and c.study.design.saw_tooth and c.n is not None else None
-    )
+    actual = c.power(c.study.null) if alpha is not None and c.study.design.saw_tooth and c.n is not None else None
     return None if actual is None or alpha is None else (actual, float(alpha))
 
 
@@ -135,10 +131,8 @@ DESIGN_TRAPS = (
         code="saw-tooth",
         severity="warning",
         condition=_saw,
-        text="Counts make the curve a saw: {what} is {before} at n = {small} but {after} at the larger n = "
-        "{large}.",
-        advice="Choose an n from which every larger one does at least as well; `bayesdesign size` gives it "
-        "as safe_n.",
+        text="Counts make the curve a saw: {what} is {before} at n = {small} but {after} at the larger n = {large}.",
+        advice="Choose an n from which every larger one does at least as well; `bayesdesign size` gives it as safe_n.",
     ),
     Trap(
         code="approx-range",

@@ -32,11 +32,7 @@ def _too_wide(c: Context) -> Values | None:
 
 
 def _too_narrow(c: Context) -> Values | None:
-    found = (
-        c.first.quantities["power_quantiles"].value
-        if c.first and "power_quantiles" in c.first.quantities
-        else None
-    )
+    found = c.first.quantities["power_quantiles"].value if c.first and "power_quantiles" in c.first.quantities else None
     if not isinstance(found, dict) or c.study.rule.favourable(c.study.favourable) == ():
         return None
     low, high = found["0.05"], found["0.95"]
@@ -73,9 +69,7 @@ def _half_width(c: Context) -> float:
     """Half the width of the middle two thirds of the prior: its sd, if it is normal."""
     order = np.argsort(c.distances)
     total = np.cumsum(c.weights[order])
-    low, high = (
-        c.distances[order][min(int(np.searchsorted(total, p)), len(order) - 1)] for p in (1 / 6, 5 / 6)
-    )
+    low, high = (c.distances[order][min(int(np.searchsorted(total, p)), len(order) - 1)] for p in (1 / 6, 5 / 6))
     return float(high - low) / 1.935
 
 
@@ -105,9 +99,7 @@ def _cut(c: Context) -> Values | None:
 
 def _no_mean(c: Context) -> Values | None:
     return (
-        None
-        if math.isfinite(c.study.prior.variable.expectation())
-        else {"belief": c.study.prior.variable.describe()}
+        None if math.isfinite(c.study.prior.variable.expectation()) else {"belief": c.study.prior.variable.describe()}
     )
 
 
@@ -134,8 +126,7 @@ PRIOR_TRAPS = (
         condition=_no_null,
         text="The prior puts no weight exactly on {null}, so every claim counts as real and no claim can be "
         "false about the null by construction.",
-        advice="Give [effect] smallest_relevant, or [prior] probability_null, to ask how often a claim is "
-        "false.",
+        advice="Give [effect] smallest_relevant, or [prior] probability_null, to ask how often a claim is false.",
     ),
     Trap(
         code="prior-too-wide",
@@ -206,8 +197,7 @@ PRIOR_TRAPS = (
         code="planning-value-in-tail",
         severity="warning",
         condition=_guess_in_tail,
-        text="The planning value {plan} is one the prior hardly believes: only {p} in 100 of it are at "
-        "least as good.",
+        text="The planning value {plan} is one the prior hardly believes: only {p} in 100 of it are at least as good.",
         advice="Plan on the assurance, or explain why the one guess and the prior differ.",
     ),
 )

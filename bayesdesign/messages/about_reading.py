@@ -136,8 +136,7 @@ READING_TRAPS = (
         code="decision-never",
         severity="block",
         condition=_never,
-        text="The rule claims nothing{n}, whatever the data: not one outcome that can occur is extreme "
-        "enough.",
+        text="The rule claims nothing{n}, whatever the data: not one outcome that can occur is extreme enough.",
         advice="Enlarge the study, or loosen alpha, before asking anything else of it.",
     ),
     Trap(
@@ -176,8 +175,7 @@ READING_TRAPS = (
         code="weak-study",
         severity="warning",
         condition=_weak,
-        text="An effect that is there would be missed {q} times in 100, so silence from this study says "
-        "little.",
+        text="An effect that is there would be missed {q} times in 100, so silence from this study says little.",
         advice="Enlarge it, measure more precisely, or announce beforehand that a non-rejection will not be "
         "read as evidence.",
     ),
@@ -201,8 +199,7 @@ READING_TRAPS = (
         condition=_risk_above_level,
         text="Of 100 claims about {p} would be false, although alpha is {alpha}: alpha speaks of studies "
         "without an effect, not of claims.",
-        advice="Quote the false-positive risk beside alpha; a smaller alpha or a more promising question "
-        "lowers it.",
+        advice="Quote the false-positive risk beside alpha; a smaller alpha or a more promising question lowers it.",
     ),
     Trap(
         code="tail-mixup",

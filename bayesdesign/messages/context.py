@@ -107,9 +107,7 @@ class Context:
         found = self.powers(np.array([effect]), n=n, study=study)
         return None if found is None or not np.isfinite(found[0]) else float(found[0])
 
-    def powers(
-        self, effects: FloatArray, *, n: int | None = None, study: Study | None = None
-    ) -> FloatArray | None:
+    def powers(self, effects: FloatArray, *, n: int | None = None, study: Study | None = None) -> FloatArray | None:
         """The same at several effects, NaN where one cannot exist; None when the design cannot say."""
         study = study or self.study
         size = n if n is not None else self.n
@@ -118,9 +116,7 @@ class Context:
             accuracy = Accuracy(effect=8, nuisance=4, auxiliary=16, finest_level=study.rule.finest_level)
             outcomes = study.design.outcomes(np.array([float(size or 1)]), nodes, study.null, accuracy)
             grid = np.broadcast_to(effects, (1, len(weight), len(effects))).copy()
-            low, high = (
-                np.broadcast_to(end, weight.shape)[:, None] for end in study.design.effect_bounds(nodes)
-            )
+            low, high = (np.broadcast_to(end, weight.shape)[:, None] for end in study.design.effect_bounds(nodes))
             possible = (effects >= low) & (effects <= high)
             regions = study.rule.regions(outcomes, study.null)
             claims = [i for i, name in enumerate(study.rule.decisions[:-1]) if name in study.rule.claims]
@@ -129,9 +125,7 @@ class Context:
             return None
         share = weight @ possible
         with np.errstate(invalid="ignore"):
-            return np.where(
-                share > 0.5, (weight[:, None] * np.where(possible, found, 0.0)).sum(axis=0) / share, np.nan
-            )
+            return np.where(share > 0.5, (weight[:, None] * np.where(possible, found, 0.0)).sum(axis=0) / share, np.nan)
 
     def with_nuisance(self, name: str, value: float) -> Study | None:
         """The study with one nuisance parameter fixed elsewhere; None if that is impossible."""
@@ -167,9 +161,7 @@ class Context:
         if not design.saw_tooth or self.n is None:
             return {}
         sizes = list(design.group_sizes(self.n).values())
-        centre = {
-            name: float(np.ravel(belief.ppf(np.array([0.5])))[0]) for name, belief in design.nuisance.items()
-        }
+        centre = {name: float(np.ravel(belief.ppf(np.array([0.5])))[0]) for name, belief in design.nuisance.items()}
         if "control" not in centre:
             return {"the sample": (self.typical(), sizes[0])}
         at = {name: np.array([value]) for name, value in centre.items()}

@@ -99,10 +99,7 @@ class Beta(Plain):
         allowed = "either a and b, or mean and size"
         check_values(
             *(((value is not None) == (key in pair), key, value, allowed) for key, value in values.items()),
-            *(
-                (_positive(values[key]), key, values[key], "a finite number > 0")
-                for key in ("a", "b", "size")
-            ),
+            *((_positive(values[key]), key, values[key], "a finite number > 0") for key in ("a", "b", "size")),
             (self.mean is None or 0 < self.mean < 1, "mean", self.mean, "between 0 and 1, ends excluded"),
         )
 
@@ -121,12 +118,8 @@ class Beta(Plain):
         inside = (x > 0) & (x < 1)
         y = np.where(inside, x, 0.5)
         log_term = stirling_error(n) - stirling_error(a) - stirling_error(b)
-        with np.errstate(
-            over="ignore", under="ignore"
-        ):  # exp(-huge) is 0; near an infinite end it may overflow
-            kernel = np.exp(
-                log_term - deviance(a, n * y) - deviance(b, n * (1 - y)) - np.log(y) - np.log1p(-y)
-            )
+        with np.errstate(over="ignore", under="ignore"):  # exp(-huge) is 0; near an infinite end it may overflow
+            kernel = np.exp(log_term - deviance(a, n * y) - deviance(b, n * (1 - y)) - np.log(y) - np.log1p(-y))
         density = math.sqrt(a / n * b / (2 * math.pi)) * kernel
         return np.select([inside, x == 0, x == 1], [density, _edge(a, b), _edge(b, a)], 0.0)
 
@@ -230,20 +223,14 @@ class Histogram(Distribution):
 
     def sf(self, x: FloatArray) -> FloatArray:
         edges, masses = self._bins()
-        return np.asarray(
-            np.interp(x, edges, np.concatenate([[1.0], np.cumsum(masses[::-1])[-2::-1], [0.0]]))
-        )
+        return np.asarray(np.interp(x, edges, np.concatenate([[1.0], np.cumsum(masses[::-1])[-2::-1], [0.0]])))
 
     def ppf(self, p: FloatArray) -> FloatArray:
         edges, masses = self._bins()
         p = np.asarray(p)
         below = np.concatenate([[0.0], np.cumsum(masses)[:-1], [1.0]])
-        place = np.clip(
-            np.searchsorted(below, p, side="left") - 1, 0, masses.size - 1
-        )  # first bin that reaches p
-        share = np.where(
-            masses[place] > 0, (p - below[place]) / np.where(masses[place] > 0, masses[place], 1.0), 0.0
-        )
+        place = np.clip(np.searchsorted(below, p, side="left") - 1, 0, masses.size - 1)  # first bin that reaches p
+        share = np.where(masses[place] > 0, (p - below[place]) / np.where(masses[place] > 0, masses[place], 1.0), 0.0)
         return edges[place] + np.clip(share, 0.0, 1.0) * np.diff(edges)[place]
 
     @property
@@ -274,9 +261,7 @@ class Histogram(Distribution):
         place = pm.Categorical(f"{name}_bin", p=masses, shape=shape)
         within = pm.Uniform(f"{name}_within", lower=0.0, upper=1.0, shape=shape)
         as_constant = pm.math.constant
-        return pm.Deterministic(
-            name, as_constant(edges[:-1])[place] + within * as_constant(np.diff(edges))[place]
-        )
+        return pm.Deterministic(name, as_constant(edges[:-1])[place] + within * as_constant(np.diff(edges))[place])
 
     def log_density(self, pm: Any, x: Any) -> Any:
         edges, masses = self._bins()

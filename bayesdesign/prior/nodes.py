@@ -13,9 +13,11 @@ NEGLIGIBLE = 1e-16  # nuisance nodes below this weight are dropped; the rest is 
 def variable_nodes(
     belief: Distribution, edges: FloatArray, low: FloatArray, high: FloatArray, order: int
 ) -> tuple[FloatArray, FloatArray]:
-    """Nodes and weights (N, M, K) of the part of `belief` that lies in low..high (M,), with panels that end on `edges` (N, M, E).
+    """Nodes and weights (N, M, K) of the part of `belief` that lies in low..high (M,), with panels that end on
+    `edges` (N, M, E).
 
-    The weights sum to the probability of low..high. Mass outside the distribution's own breaks is put on its outermost break.
+    The weights sum to the probability of low..high. Mass outside the distribution's own breaks is put on its
+    outermost break.
     """
     rows, columns = edges.shape[:2]
     parts = [_atom_nodes(belief, low, high, rows)]
@@ -34,9 +36,7 @@ def variable_nodes(
     return np.concatenate([p[0] for p in parts], axis=2), np.concatenate([p[1] for p in parts], axis=2)
 
 
-def _atom_nodes(
-    belief: Distribution, low: FloatArray, high: FloatArray, rows: int
-) -> tuple[FloatArray, FloatArray]:
+def _atom_nodes(belief: Distribution, low: FloatArray, high: FloatArray, rows: int) -> tuple[FloatArray, FloatArray]:
     values, masses = belief.atoms()
     shape = (rows, len(low), len(values))
     inside = (values >= low[:, None]) & (values <= high[:, None])
@@ -66,8 +66,9 @@ def nuisance_nodes(
 ) -> tuple[dict[str, FloatArray], FloatArray]:
     """Product nodes of independent nuisance parameters, each (M,), with weights (M,) that sum to 1.
 
-    By default the `order`-point Gauss rule of each distribution itself, which is enough where the answer varies smoothly with
-    the parameter; with `panels`, or where `kinks` lie inside a distribution, composite panels of `order` nodes, for answers that bend sharply.
+    By default the `order`-point Gauss rule of each distribution itself, which is enough where the answer varies
+    smoothly with the parameter; with `panels`, or where `kinks` lie inside a distribution, composite panels of
+    `order` nodes, for answers that bend sharply.
     """
     grids: list[FloatArray] = []
     weight = np.ones(1)
@@ -82,9 +83,7 @@ def nuisance_nodes(
     return dict(zip(nuisance, (g[keep] for g in grids), strict=True)), weight[keep] / weight[keep].sum()
 
 
-def _one_nuisance(
-    belief: Distribution, order: int, cuts: FloatArray, panels: bool
-) -> tuple[FloatArray, FloatArray]:
+def _one_nuisance(belief: Distribution, order: int, cuts: FloatArray, panels: bool) -> tuple[FloatArray, FloatArray]:
     everywhere = np.full(1, -np.inf), np.full(1, np.inf)
     x, w = (a[0, 0] for a in variable_nodes(belief, cuts[None, None], *everywhere, order if panels else 12))
     keep = w > NEGLIGIBLE
@@ -101,7 +100,8 @@ def _one_nuisance(
 def gauss_rule(x: FloatArray, w: FloatArray, order: int) -> tuple[FloatArray, FloatArray]:
     """The `order`-point Gauss rule of a discrete measure with points x and weights w that sum to 1.
 
-    Lanczos tridiagonalisation with full orthogonalisation (Golub and Welsch 1969; Gautschi 2004, Orthogonal Polynomials, 2.2.3).
+    Lanczos tridiagonalisation with full orthogonalisation (Golub and Welsch 1969; Gautschi 2004, Orthogonal
+    Polynomials, 2.2.3).
     """
     centre, spread = w @ x, np.sqrt(w @ (x - w @ x) ** 2)
     t = (x - centre) / spread

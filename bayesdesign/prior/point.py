@@ -59,5 +59,5 @@ class Point(Distribution):
     def random_variable(self, pm: Any, name: str, shape: tuple[int, ...]) -> Any:
         return pm.Deterministic(name, pm.math.constant(np.full(shape, float(self.value))))
 
-    def log_density(self, pm: Any, x: Any) -> Any:  # noqa: ARG002
+    def log_density(self, pm: Any, x: Any) -> Any:
         raise NotOffered(f"a point mass ({self.describe()}) has no density, so it cannot be sampled by NUTS")

@@ -40,9 +40,7 @@ class Gamma(Plain):
         y = self.rate * np.asarray(x)
         inside = (y > 0) & (y < math.inf)
         y = np.where(inside, y, 1.0)
-        with np.errstate(
-            over="ignore", under="ignore"
-        ):  # exp(-huge) is 0; huge / tiny is an infinite density
+        with np.errstate(over="ignore", under="ignore"):  # exp(-huge) is 0; huge / tiny is an infinite density
             log_term = -stirling_error(k) - deviance(k, y) - np.log(y)
             density = self.rate * math.sqrt(k / (2 * math.pi)) * np.exp(log_term)
         at_zero = math.inf if k < 1 else self.rate if k == 1 else 0.0
@@ -103,13 +101,9 @@ class Lognormal(Plain):
 
     def pdf(self, x: FloatArray) -> FloatArray:
         inside = np.asarray(x) > 0
-        with np.errstate(
-            over="ignore"
-        ):  # at the smallest positive x the divisor underflows; gauss is 0 there
+        with np.errstate(over="ignore"):  # at the smallest positive x the divisor underflows; gauss is 0 there
             divisor = self.log_sd * np.where(inside & np.isfinite(x), x, 1.0)
-            return np.where(
-                inside & (divisor > 0), gauss(self._z(x)) / np.where(divisor > 0, divisor, 1.0), 0.0
-            )
+            return np.where(inside & (divisor > 0), gauss(self._z(x)) / np.where(divisor > 0, divisor, 1.0), 0.0)
 
     def cdf(self, x: FloatArray) -> FloatArray:
         return np.asarray(special.ndtr(self._z(x)))

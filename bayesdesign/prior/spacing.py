@@ -49,9 +49,7 @@ def split(points: FloatArray, parts: int) -> FloatArray:
     return np.append(inner.ravel(), points[-1])
 
 
-def first_reached(
-    reached: Callable[[FloatArray], BoolArray], low: FloatArray, high: FloatArray
-) -> FloatArray:
+def first_reached(reached: Callable[[FloatArray], BoolArray], low: FloatArray, high: FloatArray) -> FloatArray:
     """Smallest float in [low, high] for which the monotone `reached` holds, by bisection; else high."""
     low, high = low.copy(), high.copy()
     high = np.where(reached(low), low, high)

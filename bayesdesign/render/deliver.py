@@ -11,9 +11,7 @@ from typing import TextIO
 from bayesdesign.core.errors import Fault, StudyError
 
 # for terminals and pipes whose encoding has no typographic signs
-_PLAIN = str.maketrans(
-    {"─": "-", "│": "|", "±": "+-", "·": ".", "×": "x", "–": "-", "…": "...", "≥": ">=", "≤": "<="}
-)
+_PLAIN = str.maketrans({"─": "-", "│": "|", "±": "+-", "·": ".", "×": "x", "–": "-", "…": "...", "≥": ">=", "≤": "<="})
 
 
 def check_target(out: str, study_file: str = "") -> None:
@@ -45,9 +43,7 @@ def write_file(out: str, text: str) -> None:
             beside.chmod(target.stat().st_mode & 0o777)
         beside.replace(target)
     except OSError as failure:
-        raise _fault(
-            out, f"cannot be written ({failure.strerror or failure})", "choose another place"
-        ) from failure
+        raise _fault(out, f"cannot be written ({failure.strerror or failure})", "choose another place") from failure
     finally:
         beside.unlink(missing_ok=True)
 

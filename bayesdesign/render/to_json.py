@@ -7,9 +7,7 @@ from typing import Any
 # Legal inside JSON strings, but able to drive a terminal or to turn the reading direction: C1 controls,
 # delete, bidi marks,
 # line separators, tag characters.
-_ESCAPED = re.compile(
-    "[\x7f-\x9f\u061c\u200e\u200f\u2028-\u202e\u2066-\u2069\ufeff\U000e0000-\U000e007f\ud800-\udfff]"
-)
+_ESCAPED = re.compile("[\x7f-\x9f\u061c\u200e\u200f\u2028-\u202e\u2066-\u2069\ufeff\U000e0000-\U000e007f\ud800-\udfff]")
 
 
 def to_json(document: dict[str, Any]) -> str:

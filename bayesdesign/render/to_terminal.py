@@ -39,9 +39,7 @@ def result_text(result: "Result", *, colour: bool = False) -> str:
     return page.text(colour=colour)
 
 
-def check_text(
-    study: "Study", says: Sequence[str], messages: Sequence["Message"], *, colour: bool = False
-) -> str:
+def check_text(study: "Study", says: Sequence[str], messages: Sequence["Message"], *, colour: bool = False) -> str:
     """The answer of `check`: the study in plain words."""
     page = Page()
     title(page, study, (), question=False)
@@ -88,9 +86,7 @@ def counts_table(page: Page, study: "Study", table: "DecisionTable") -> None:
     left = WIDTH - column * (len(table.decisions) + 1)
     page.section("of 100 runs")
     for upper_or_lower in (0, 1):
-        heads = [
-            pad(shorten(head[upper_or_lower], column), column, ">") for head in headings(table.decisions)
-        ]
+        heads = [pad(shorten(head[upper_or_lower], column), column, ">") for head in headings(table.decisions)]
         page.line(
             pad(("", "the truth")[upper_or_lower], left)
             + "".join(heads)
@@ -126,20 +122,15 @@ def _conditionals(page: Page, table: "DecisionTable") -> None:
         return  # eight columns of numbers are what 80 columns can hold
     left = WIDTH - 2 * across * column - 2
     truth, chosen = (
-        f" {name} {'─' * (across * column - width(name) - 2)}"
-        for name in ("of each truth", "of each decision")
+        f" {name} {'─' * (across * column - width(name) - 2)}" for name in ("of each truth", "of each decision")
     )
     page.line(f"per cent {'─' * (left - 9)}{truth}──{chosen}", "faint")
     for part in (0, 1):
-        heads = "".join(
-            pad(shorten(head[part], column - 1), column, ">") for head in headings(table.decisions)
-        )
+        heads = "".join(pad(shorten(head[part], column - 1), column, ">") for head in headings(table.decisions))
         page.line(pad("", left) + heads + "  " + heads, "faint")
     for s in reversed(range(len(table.states))):
         row: list[float] | list[None] = table.given_state[s] or [None] * across
-        shown = [
-            "".join(pad(_per_cent(p), column, ">") for p in line) for line in (row, table.given_decision[s])
-        ]
+        shown = ["".join(pad(_per_cent(p), column, ">") for p in line) for line in (row, table.given_decision[s])]
         page.line(pad(shorten(words.label(table.states[s]), left - 1), left) + "  ".join(shown))
 
 
@@ -185,9 +176,7 @@ def _many(page: Page, study: "Study", answers: Sequence["Answer"]) -> None:
     )
     page.section("by size")
     names = [
-        name
-        for name in CURVE
-        if any(a.quantities[name].value is not None for a in answers if name in a.quantities)
+        name for name in CURVE if any(a.quantities[name].value is not None for a in answers if name in a.quantities)
     ]
     label = words.label(study.design.n_label)
     left = max(width(label), *(len(str(a.n)) for a in answers)) + 1
@@ -195,18 +184,12 @@ def _many(page: Page, study: "Study", answers: Sequence["Answer"]) -> None:
     for answer in answers:
         cells = [_plain(answer.quantities.get(name)) for name in names]
         page.line(pad(str(answer.n), left, ">") + "".join(pad(cell, 8, ">") for cell in cells))
-    errors = [
-        q.error for a in answers for name in names if isinstance((q := a.quantities[name]).error, float | int)
-    ]
+    errors = [q.error for a in answers for name in names if isinstance((q := a.quantities[name]).error, float | int)]
     if errors:
-        page.line(
-            f"largest error {uncertainty(max(e for e in errors if isinstance(e, float | int)))}", "faint"
-        )
+        page.line(f"largest error {uncertainty(max(e for e in errors if isinstance(e, float | int)))}", "faint")
     page.gap()
     for name in names:
-        page.line(
-            pad(CURVE[name], 9) + pad(words.QUANTITIES[name][0], 24) + words.QUANTITIES[name][1], "faint"
-        )
+        page.line(pad(CURVE[name], 9) + pad(words.QUANTITIES[name][0], 24) + words.QUANTITIES[name][1], "faint")
 
 
 def _plain(quantity: "Quantity | None") -> str:
@@ -219,8 +202,7 @@ def _plain(quantity: "Quantity | None") -> str:
 def _cross_check(page: Page, answer: "Answer", *, named: bool) -> None:
     page.section(f"both routes{f', n = {answer.n}' if named else ''}")
     page.line(
-        pad("", 30)
-        + "".join(pad(head, 12, ">") for head in ("integration", "sampling", "std. error", "difference")),
+        pad("", 30) + "".join(pad(head, 12, ">") for head in ("integration", "sampling", "std. error", "difference")),
         "faint",
     )
     for name, comparison in answer.cross_check.items():
@@ -273,9 +255,7 @@ def foot_messages(page: Page, messages: Sequence["Message"]) -> None:
         page.paragraph(safe(body, 2000), message.severity, hang=9, first=words.SEVERITY[message.severity])
 
 
-def _foot(
-    page: Page, study: "Study", messages: Sequence["Message"], provenance: dict[str, Any], routes: str
-) -> None:
+def _foot(page: Page, study: "Study", messages: Sequence["Message"], provenance: dict[str, Any], routes: str) -> None:
     foot_messages(page, messages)
     caution(page, study)
     provenance_line(page, study.sha256, provenance, routes)

@@ -29,9 +29,7 @@ def width(text: str) -> int:
     """Columns the text takes on a terminal: wide characters take two, combining ones none."""
     if text.isascii():
         return len(text)
-    return sum(
-        0 if unicodedata.combining(c) else 2 if unicodedata.east_asian_width(c) in "WF" else 1 for c in text
-    )
+    return sum(0 if unicodedata.combining(c) else 2 if unicodedata.east_asian_width(c) in "WF" else 1 for c in text)
 
 
 def shorten(text: str, limit: int) -> str:
@@ -131,6 +129,4 @@ class Page:
     def text(self, *, colour: bool = False) -> str:
         if not colour:
             return "\n".join(text for text, _ in self.lines) + "\n"
-        return (
-            "\n".join(f"{self.INK[s]}{t}\x1b[0m" if s in self.INK and t else t for t, s in self.lines) + "\n"
-        )
+        return "\n".join(f"{self.INK[s]}{t}\x1b[0m" if s in self.INK and t else t for t, s in self.lines) + "\n"

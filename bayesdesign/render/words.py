@@ -138,9 +138,7 @@ def hundred(table: "DecisionTable") -> list[list[int]]:
     columns = [sum(row[d] for row in table.joint) for d in range(len(table.decisions))]
     totals = largest_remainder(columns, 100)
     split = [largest_remainder([row[d] for row in table.joint], totals[d]) for d in range(len(totals))]
-    return [
-        [split[d][s] if sum(split[d]) else 0 for d in range(len(totals))] for s in range(len(table.states))
-    ]
+    return [[split[d][s] if sum(split[d]) else 0 for d in range(len(totals))] for s in range(len(table.states))]
 
 
 def count(number: int, probability: float) -> str:
@@ -184,13 +182,7 @@ def headline(study: "Study", answer: "Answer") -> str:
     sure = sum(joint[s][d] for s in right for d in good)
     if runs:
         kind = "relevant and on that side" if study.effect.smallest_relevant is not None else "on that side"
-        kind = (
-            kind
-            if len(right) == 1
-            else "relevant"
-            if study.effect.smallest_relevant is not None
-            else "really there"
-        )
+        kind = kind if len(right) == 1 else "relevant" if study.effect.smallest_relevant is not None else "really there"
         everywhere = "all" if hits == runs else count(hits, sure)
         text += f" In {everywhere} of those the effect is {kind}."
     return text
@@ -211,9 +203,7 @@ def silence(study: "Study", answer: "Answer") -> str:
         return f"{text}."
     middle = study.states.null
     if middle is None:
-        each = ", ".join(
-            f"{count(runs[s], chance[s])} {name}" for s, name in reversed(list(enumerate(table.states)))
-        )
+        each = ", ".join(f"{count(runs[s], chance[s])} {name}" for s, name in reversed(list(enumerate(table.states))))
         return (
             f"{text}; in every one of those the effect still differs from {null(study)}, for the prior puts "
             "no weight exactly "
@@ -248,9 +238,7 @@ def size_sentences(study: "Study", size: "SizeAnswer") -> list[str]:
             "the safe one."
         )
     else:
-        said.append(
-            f"Not every larger one does, right up to {size.searched_to}: the curve goes up and down with n."
-        )
+        said.append(f"Not every larger one does, right up to {size.searched_to}: the curve goes up and down with n.")
     return said
 
 
@@ -264,11 +252,15 @@ def _unmet(size: "SizeAnswer") -> list[str]:
             *reached,
             f"Its limit with endless data is {size.ceiling:.4g}, so a larger [target] max_n will find one.",
         ]
+    if size.direction == "at_most":
+        limit = (
+            f"With endless data it settles at {size.ceiling:.4g}, which the prior and the rule alone decide. A prior "
+            "with more weight on a real effect, a stricter rule, or a humbler target would be needed."
+        )
+        return [*reached, limit]
     ceiling = (
-        f"Its ceiling is {size.ceiling:.4g}: with endless data the prior alone decides, and no sample size "
-        "goes beyond. "
-        "Only a prior with more weight on the hoped-for side, a rule that claims more readily, or a humbler "
-        "target "
-        "can raise the answer."
+        f"Its ceiling is {size.ceiling:.4g}: with endless data the prior alone decides, and no sample size goes "
+        "beyond. Only a prior with more weight on the hoped-for side, a rule that claims more readily, or a humbler target can "
+        "raise the answer."
     )
     return [*reached, ceiling]

@@ -55,7 +55,9 @@ class Rule(abc.ABC):
 
     @abc.abstractmethod
     def limit(self, distance: FloatArray) -> FloatArray:
-        """P(decision | truth) as n grows without bound, shape (*distance.shape, decisions); distance 0 is exactly the null."""
+        """P(decision | truth) as n grows without bound, shape (*distance.shape, decisions); distance 0 is exactly
+        the null.
+        """
 
     @abc.abstractmethod
     def decide(self, analysis: Analysis, null: float, working_null: float) -> IntArray:

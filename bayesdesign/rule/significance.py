@@ -16,7 +16,8 @@ from bayesdesign.truth import Favourable
 @final
 @dataclass(frozen=True, kw_only=True)
 class Significance(Rule):
-    """Reject when the p-value is at most alpha, and claim the side on which the estimate lies (Neyman and Pearson 1933).
+    """Reject when the p-value is at most alpha, and claim the side on which the estimate lies (Neyman and Pearson
+    1933).
 
     Two-sided: alpha / 2 in each tail. `tails` chooses between the two common two-sided p-values of exact tests.
     """

@@ -51,13 +51,9 @@ def _effect(study: Study) -> list[str]:
     said = [f"What is asked: {words}, against {_natural(null, study)}. {good}"]
     if effect.smallest_relevant is not None:
         low, high = _relevant(study)
-        said.append(
-            f"It is relevant from {_natural(high, study)} upwards or {_natural(low, study)} downwards."
-        )
+        said.append(f"It is relevant from {_natural(high, study)} upwards or {_natural(low, study)} downwards.")
     if effect.planning_value is not None:
-        said.append(
-            f"The one guess for a classical power calculation is {_natural(effect.planning_value, study)}."
-        )
+        said.append(f"The one guess for a classical power calculation is {_natural(effect.planning_value, study)}.")
     return said
 
 
@@ -74,11 +70,7 @@ def _relevant(study: Study) -> tuple[float, float]:
 def _design(study: Study) -> list[str]:
     design = study.design
     n = design.planned_n
-    sizes = (
-        ", ".join(f"{_label(key)} {size}" for key, size in design.group_sizes(n).items())
-        if n is not None
-        else ""
-    )
+    sizes = ", ".join(f"{_label(key)} {size}" for key, size in design.group_sizes(n).items()) if n is not None else ""
     analysis = getattr(design, "analysis", "")
     known = [_label(design.family), sizes, f"analysis {_label(analysis)}" if analysis else ""]
     said = [f"Design {', '.join(filter(None, known))}."]
@@ -110,16 +102,12 @@ def _prior(study: Study) -> list[str]:
     what = f"the {'treated arm' if arm else 'effect'}{given}"
     opening = f"Before the study, {what} is believed to be: {variable.describe()}"
     said = [
-        f"{opening}."
-        if isinstance(variable, Point)
-        else f"{opening}; {_quantiles(variable, '' if arm else unit)}."
+        f"{opening}." if isinstance(variable, Point) else f"{opening}; {_quantiles(variable, '' if arm else unit)}."
     ]
     if arm:
         said.append(f"With the control arm, this makes the effect {_spread(*_implied(study), unit)}.")
     if weight > 0:
-        said.append(
-            f"The prior weight on an effect of exactly {_natural(study.null, study)} is {_figure(weight)}."
-        )
+        said.append(f"The prior weight on an effect of exactly {_natural(study.null, study)} is {_figure(weight)}.")
     else:
         said.append(f"The prior puts no weight on an effect of exactly {_natural(study.null, study)}.")
     return said
@@ -146,9 +134,7 @@ def _rule(study: Study) -> list[str]:
     good = [_label(name) for name in rule.favourable(study.favourable)]
     decisions = ", ".join(_label(name) for name in rule.decisions)
     favourable = (
-        f"the favourable: {' or '.join(good)}"
-        if good
-        else "none of them is favourable, so this study cannot succeed"
+        f"the favourable: {' or '.join(good)}" if good else "none of them is favourable, so this study cannot succeed"
     )
     states = ", ".join(_label(name) for name in study.states.names)
     return [
@@ -180,9 +166,7 @@ def _target(study: Study) -> list[str]:
     target = study.target
     if target is None:
         return []
-    side, bound = (
-        ("at least", target.at_least) if target.at_least is not None else ("at most", target.at_most)
-    )
+    side, bound = ("at least", target.at_least) if target.at_least is not None else ("at most", target.at_most)
     said = f"The target: {_label(target.measure)} of {side} {_figure(bound if bound is not None else np.nan)}"
     label = _label(study.design.n_label)
     return [f"{said}, with {label} up to {target.max_n}."]

@@ -131,9 +131,7 @@ def _support_faults(where: str, belief: Distribution, low: float, high: float) -
     outside = _outside(belief, np.array([low]), np.array([high]))[0] + ends
     if outside <= TRACE:
         return _node_faults(where, belief)
-    allowed = (
-        f"values strictly between {low:g} and {high:g}" if math.isfinite(high) else f"values above {low:g}"
-    )
+    allowed = f"values strictly between {low:g} and {high:g}" if math.isfinite(high) else f"values above {low:g}"
     if isinstance(belief, Point):
         return [Fault(where=where, problem="not a possible value", got=f"{belief.value:g}", allowed=allowed)]
     return [
@@ -187,9 +185,7 @@ def _variable_faults(study: "Study") -> list[Fault]:
     # a cut that the study asked for, and a single effect, are taken where they are possible
     if lost <= TRACE or (prior.variable.kind in ("truncated", "point") and lost < 0.5):
         return []
-    example = f"{low[0]:.4g} to {high[0]:.4g}" + (
-        " (it depends on the nuisance parameters)" if len(weight) > 1 else ""
-    )
+    example = f"{low[0]:.4g} to {high[0]:.4g}" + (" (it depends on the nuisance parameters)" if len(weight) > 1 else "")
     if isinstance(prior.variable, Point):
         return [
             Fault(
@@ -204,8 +200,7 @@ def _variable_faults(study: "Study") -> list[Fault]:
             where=where,
             problem=f"{lost:.2g} of its probability lies on impossible values",
             got=prior.variable.describe(),
-            allowed=f"possible values are {example}; "
-            "choose another distribution, or add truncated = [low, high]",
+            allowed=f"possible values are {example}; choose another distribution, or add truncated = [low, high]",
         )
     ]
 
@@ -225,18 +220,14 @@ def _target_faults(study: "Study") -> list[Fault]:
         )
     bounds = {"at_least": target.at_least, "at_most": target.at_most}
     for key, bound in bounds.items():
-        if bound is not None and not 0 <= bound <= (
-            math.inf if target.measure.startswith("exaggeration") else 1
-        ):
+        if bound is not None and not 0 <= bound <= (math.inf if target.measure.startswith("exaggeration") else 1):
             allowed = (
                 "a number above 0"
                 if target.measure.startswith("exaggeration")
                 else "a probability, 0 to 1 (0.8, not 80)"
             )
             faults.append(
-                Fault(
-                    where=f"[target] {key}", problem="not a possible value", got=f"{bound:g}", allowed=allowed
-                )
+                Fault(where=f"[target] {key}", problem="not a possible value", got=f"{bound:g}", allowed=allowed)
             )
     if target.max_n < study.design.minimum_n:
         faults.append(

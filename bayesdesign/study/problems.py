@@ -58,9 +58,7 @@ def faults_of(section: str, problem: Problem, words: Mapping[str, str]) -> list[
             return [_not_a_choice(where, problem, got)]
         case "less_than_equal" | "greater_than_equal":
             side, bound = (
-                ("most", problem.more.get("le"))
-                if problem.kind[0] == "l"
-                else ("least", problem.more.get("ge"))
+                ("most", problem.more.get("le")) if problem.kind[0] == "l" else ("least", problem.more.get("ge"))
             )
             return [
                 Fault(
@@ -112,22 +110,12 @@ def _of_object(where: str, table: Any, fault: Fault) -> Fault:
     """A fault that an object raised about one of its own keys."""
     if not isinstance(table, dict):  # a bare number: the object's only key is not in the file
         return replace(fault, where=where, got=shown(table))
-    inner = (
-        where
-        if not fault.where
-        else f"{where} {fault.where}"
-        if " " not in where
-        else f"{where}.{fault.where}"
-    )
+    inner = where if not fault.where else f"{where} {fault.where}" if " " not in where else f"{where}.{fault.where}"
     name = fault.where.partition(".")[0]
     if name in table:
         return replace(fault, where=inner, got=shown(table[name]))
-    problem = (
-        "missing" if fault.got in ("None", "") and fault.problem == "value not allowed" else fault.problem
-    )
-    return replace(
-        fault, where=inner, problem=problem, got="" if fault.got == "None" else cut(escaped(fault.got))
-    )
+    problem = "missing" if fault.got in ("None", "") and fault.problem == "value not allowed" else fault.problem
+    return replace(fault, where=inner, problem=problem, got="" if fault.got == "None" else cut(escaped(fault.got)))
 
 
 def _not_a_belief(where: str, value: Any) -> Fault:
@@ -136,9 +124,7 @@ def _not_a_belief(where: str, value: Any) -> Fault:
         hint = ", without quotes" if isinstance(value, str) else ""
         example = '{distribution = "normal", mean = 0, sd = 1}'
         allowed = f"a number{hint}, or a table like {example}"
-        return Fault(
-            where=where, problem="neither a number nor a distribution", got=shown(value), allowed=allowed
-        )
+        return Fault(where=where, problem="neither a number nor a distribution", got=shown(value), allowed=allowed)
     if "distribution" not in value:
         return Fault(where=f"{where}.distribution", problem="missing", allowed=f"one of: {', '.join(kinds)}")
     return unknown(

@@ -17,9 +17,7 @@ from bayesdesign.study.study import Effect, Study
 from bayesdesign.study.words import SECTIONS
 
 LARGEST = 1_000_000  # bytes; a study with a long histogram has a thousandth of it
-DEEP_KEY = re.compile(
-    r"""(?<![\w"'-])(?:[\w"'-]++[ \t]*+\.[ \t]*+){16}"""
-)  # tomllib takes quadratic time for these
+DEEP_KEY = re.compile(r"""(?<![\w"'-])(?:[\w"'-]++[ \t]*+\.[ \t]*+){16}""")  # tomllib takes quadratic time for these
 
 Tables = dict[str, Any]
 
@@ -148,9 +146,7 @@ def _parsed(text: str, file: str) -> Tables:
             ),
         )
     if DEEP_KEY.search(text):
-        raise _refusal(
-            file, Fault(where="", problem="nested too deeply", allowed="keys of at most 16 dotted parts")
-        )
+        raise _refusal(file, Fault(where="", problem="nested too deeply", allowed="keys of at most 16 dotted parts"))
     try:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as bad:
@@ -181,9 +177,7 @@ def _sections(raw: Tables) -> tuple[Tables, list[Fault]]:
     tables, faults = {}, []
     for name, table in raw.items():
         if name not in SECTIONS and not isinstance(table, dict):
-            faults.append(
-                unknown(shown_key(name), "key, outside of any section", name, SECTIONS, shown(table))
-            )
+            faults.append(unknown(shown_key(name), "key, outside of any section", name, SECTIONS, shown(table)))
         elif name not in SECTIONS:
             faults.append(unknown(f"[{shown_key(name)}]", "section", name, SECTIONS))
         elif not isinstance(table, dict):
@@ -286,9 +280,7 @@ def _assembled(tables: Tables, parts: Tables, source: dict[str, str]) -> tuple[S
                 target=parts.get("target"), **source,
             )  # fmt: skip
     except StudyError as bad:
-        return None, _from_prior(
-            [replace(fault, got=cut(escaped(fault.got))) for fault in bad.faults], tables
-        )
+        return None, _from_prior([replace(fault, got=cut(escaped(fault.got))) for fault in bad.faults], tables)
     except (ArithmeticError, np.linalg.LinAlgError, MemoryError):
         return None, [
             Fault(

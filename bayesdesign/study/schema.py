@@ -51,9 +51,7 @@ LARGEST_WHOLE = 1_000_000_000  # the products of larger counts leave the 64-bit 
 type Keys = dict[str, tuple[Any, Any]]  # name: (annotation, pydantic's Field)
 
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-End = Annotated[
-    float, Field(strict=True)
-]  # of a truncated range: one may be infinite, and Truncated refuses NaN
+End = Annotated[float, Field(strict=True)]  # of a truncated range: one may be infinite, and Truncated refuses NaN
 Whole = Annotated[int, Field(strict=True, le=LARGEST_WHOLE)]
 Text = Annotated[str, Field(strict=True)]
 SCALARS = {float: Number, int: Whole, str: Text, bool: Annotated[bool, Field(strict=True)]}
@@ -107,9 +105,7 @@ def check(section: str, tag: str, table: dict[str, Any]) -> tuple[Any, list[Faul
         return model.model_validate(table).build(), []
     except ValidationError as bad:
         found = bad.errors(include_url=False)
-        problems = [
-            Problem(kind=e["type"], path=e["loc"], got=e["input"], more=e.get("ctx", {})) for e in found
-        ]
+        problems = [Problem(kind=e["type"], path=e["loc"], got=e["input"], more=e.get("ctx", {})) for e in found]
     except Invalid as bad:
         problems = [Problem(kind="invalid", path=(), got=table, more={"faults": bad.faults})]
     return None, [
@@ -177,9 +173,7 @@ def section_model(section: str, tag: str, kinds: frozenset[str]) -> type[Table]:
                 belief,
             )
         case "prior":
-            return _table(
-                Prior, section, {CONTROL: (belief, _key(words_of(Prior, section)[CONTROL], None))}, belief
-            )
+            return _table(Prior, section, {CONTROL: (belief, _key(words_of(Prior, section)[CONTROL], None))}, belief)
         case _:
             return _table({"study": Heading, "effect": Effect}[section], section, {}, belief)
 
@@ -218,9 +212,7 @@ def _choice(key: str, models: Sequence[Any]) -> Any:
 
 
 def _model(name: str, about: str, keys: Keys) -> type[Table]:
-    return cast(
-        "type[Table]", create_model(name, __base__=Table, __doc__=about, **cast("dict[str, Any]", keys))
-    )
+    return cast("type[Table]", create_model(name, __base__=Table, __doc__=about, **cast("dict[str, Any]", keys)))
 
 
 def _table(cls: Any, section: str, more: Keys, belief: Any, tag: str = "") -> type[Table]:

@@ -16,7 +16,9 @@ from bayesdesign.truth import EDGE, Favourable, States
 @final
 @dataclass(frozen=True, kw_only=True)
 class Effect:
-    """`[effect]`: the question on its scale. `smallest_relevant` is a distance from the null (a ratio above 1 on ratio scales)."""
+    """`[effect]`: the question on its scale. `smallest_relevant` is a distance from the null (a ratio above 1 on
+    ratio scales).
+    """
 
     null: float | None = None
     favourable: Favourable | None = None
@@ -28,7 +30,9 @@ class Effect:
 @final
 @dataclass(frozen=True, kw_only=True)
 class Prior:
-    """`[prior]`: `probability_null` exactly at the null; otherwise the effect, or the treated arm, follows a distribution."""
+    """`[prior]`: `probability_null` exactly at the null; otherwise the effect, or the treated arm, follows a
+    distribution.
+    """
 
     effect: Distribution | None = None
     treatment: Distribution | None = None
@@ -82,7 +86,9 @@ class Study:
         """The null value in natural units."""
         null = self.effect.null if self.effect.null is not None else self.design.default_null
         if null is None:
-            raise StudyError([Fault(where="[effect] null", problem="missing", allowed="this family needs a null value")], self.file)
+            raise StudyError(
+                [Fault(where="[effect] null", problem="missing", allowed="this family needs a null value")], self.file
+            )
         return null
 
     @property

@@ -56,11 +56,7 @@ def template(family: str) -> str:
             section = line.strip("[]")
             lines += ["", f"# {SECTIONS[section]}", line]
         elif found := re.match(r"(?P<option># )?(?P<key>\w+) = ", line):
-            words = (
-                keys[found["key"]]
-                if section == "design" and found["key"] in keys
-                else KEYS[section][found["key"]]
-            )
+            words = keys[found["key"]] if section == "design" and found["key"] in keys else KEYS[section][found["key"]]
             lines += _key(line.removeprefix("# "), words, optional=found["option"] is not None)
     return "\n".join(lines) + "\n"
 

@@ -82,6 +82,4 @@ def docstring_words(cls: Any) -> dict[str, str]:
 def example_words(example: str) -> dict[str, str]:
     """Comments of the `[design]` keys in a family's example."""
     design = example.partition("[design]")[2].partition("\n[")[0]
-    return {
-        key: words.strip() for key, words in re.findall(r"^(?:# )?(\w+) = .*?\s# (.+)$", design, re.MULTILINE)
-    }
+    return {key: words.strip() for key, words in re.findall(r"^(?:# )?(\w+) = .*?\s# (.+)$", design, re.MULTILINE)}

@@ -236,7 +236,7 @@ TOGETHER = [
 ARMS = [
     (
         {"design__control": None},
-        "[design] control: missing; the proportion in the control group: a number or a distribution",
+        "[design] control: missing; the control group's proportion: number or distribution",
     ),
     (
         {"prior__control": "0.3"},
