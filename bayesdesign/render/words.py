@@ -260,7 +260,8 @@ def _unmet(size: "SizeAnswer") -> list[str]:
         return [*reached, limit]
     ceiling = (
         f"Its ceiling is {size.ceiling:.4g}: with endless data the prior alone decides, and no sample size goes "
-        "beyond. Only a prior with more weight on the hoped-for side, a rule that claims more readily, or a humbler target can "
+        "beyond. Only a prior with more weight on the hoped-for side, a rule that claims more readily, or a "
+        "humbler target can "
         "raise the answer."
     )
     return [*reached, ceiling]

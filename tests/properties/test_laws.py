@@ -21,8 +21,8 @@ from bayesdesign.result import Answer
 from bayesdesign.rule import Significance
 from bayesdesign.study.study import Prior, Study
 
-few = settings(deadline=None, max_examples=25, derandomize=True)
-more = settings(deadline=None, max_examples=60, derandomize=True)
+few = settings(deadline=None, max_examples=12, derandomize=True)
+more = settings(deadline=None, max_examples=24, derandomize=True)
 MIRROR: dict[Any, Any] = {"higher": "lower", "lower": "higher"}
 SUMS = 1e-12
 
