@@ -201,7 +201,7 @@ def quantity(number: Number, i: int, route: str, tolerance: float) -> Quantity:
         why = f"its condition is so unlikely that the integration error {error:.2g} exceeds the tolerance"
         return Quantity(value=None, error=None, route=route, why_null=why)
     if route == "integration" and np.max(error) > COARSE * max(1.0, float(np.max(np.abs(value)))):
-        why = f"its integration error {np.max(error):.2g} is too large (outcomes are counts); use --route sampling"
+        why = f"its integration error {np.max(error):.2g} is too large; use --route sampling"
         return Quantity(value=None, error=None, route=route, why_null=why)
     if np.ndim(value):
         return Quantity(value=_by_level(value), error=_by_level(error), route=route)

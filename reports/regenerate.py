@@ -40,7 +40,11 @@ def transcript(study: str) -> str:
 
 def index(studies: list[Path]) -> str:
     """README.md of the reports: two lines for each study."""
-    lines = ["# Reports", "", "Written by `uv run python reports/regenerate.py`; a test compares them with what it writes now."]
+    lines = [
+        "# Reports",
+        "",
+        "Written by `uv run python reports/regenerate.py`; a test compares them with what it writes now.",
+    ]
     for study in studies:
         text = tomllib.loads(study.read_text(encoding="utf-8"))["study"]
         name = study.stem

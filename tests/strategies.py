@@ -7,7 +7,6 @@ from hypothesis import strategies as st
 from bayesdesign.design import Design, Estimate, OneMean, OneProportion, PairedMeans, TwoMeans, TwoProportions
 from bayesdesign.prior import (
     Beta,
-    Cauchy,
     Distribution,
     Gamma,
     Histogram,
@@ -45,7 +44,13 @@ smooth: st.SearchStrategy[Distribution] = st.one_of(
     normals,
     st.builds(StudentT, df=numbers(2.5, 30.0), location=centres, scale=widths),
     st.builds(lambda a, w: Uniform(low=a, high=a + w), centres, widths),
-    st.builds(lambda m, s, a, w: Truncated(base=Normal(mean=m, sd=s), low=a, high=a + w), numbers(-0.3, 0.3), numbers(0.3, 1.0), numbers(-0.6, 0.1), widths),
+    st.builds(
+        lambda m, s, a, w: Truncated(base=Normal(mean=m, sd=s), low=a, high=a + w),
+        numbers(-0.3, 0.3),
+        numbers(0.3, 1.0),
+        numbers(-0.6, 0.1),
+        widths,
+    ),
     histograms(-1.5, 1.5),
 )
 """Beliefs about an effect, about 1 in size, all with a mean."""
@@ -87,11 +92,15 @@ def lines(draw: st.DrawFn, *, uncertain: bool = False, welch: bool = False) -> D
         case "unequal":
             return TwoMeans(n_treatment=n, n_control=draw(sizes), sd=sd, analysis=analysis)
         case _:
-            return TwoMeans(n_per_group=n, sd_treatment=sd, sd_control=Point(value=draw(numbers(0.5, 3.0))), analysis="welch")
+            return TwoMeans(
+                n_per_group=n, sd_treatment=sd, sd_control=Point(value=draw(numbers(0.5, 3.0))), analysis="welch"
+            )
 
 
 rules = st.builds(
-    Significance, alpha=st.sampled_from([0.001, 0.01, 0.025, 0.05, 0.1, 0.2]), sides=st.sampled_from(["two", "higher", "lower"])
+    Significance,
+    alpha=st.sampled_from([0.001, 0.01, 0.025, 0.05, 0.1, 0.2]),
+    sides=st.sampled_from(["two", "higher", "lower"]),
 )
 spikes = st.sampled_from([0.0, 0.0, 0.1, 0.5, 0.9])
 shares = st.one_of(
@@ -111,7 +120,9 @@ def questions(draw: st.DrawFn, null: float, relevant: tuple[float, float]) -> Ef
 
 
 @st.composite
-def line_studies(draw: st.DrawFn, *, priors: st.SearchStrategy[Distribution] = lumpy, uncertain: bool = False, welch: bool = False) -> Study:
+def line_studies(
+    draw: st.DrawFn, *, priors: st.SearchStrategy[Distribution] = lumpy, uncertain: bool = False, welch: bool = False
+) -> Study:
     return Study(
         title="random",
         design=draw(lines(uncertain=uncertain, welch=welch)),

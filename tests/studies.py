@@ -25,7 +25,7 @@ def study(
     target: Target | None = None,
     **question: Any,
 ) -> Study:
-    """A study; `effect` is the prior (or its distribution, with `spike` exactly at the null), `question` the `[effect]` table."""
+    """A study; `effect` is the prior (or its distribution, with `spike` at the null), `question` is `[effect]`."""
     prior = effect if isinstance(effect, Prior) else Prior(effect=effect, probability_null=spike)
     return Study(title="test", design=design, prior=prior, rule=rule, effect=Effect(**question), target=target)
 
@@ -64,14 +64,16 @@ def cell(given: Answer, states: Sequence[str], decision: str) -> float:
 
 
 def count_study(x: int, n: int, null: float, prior: Distribution, *, spike: float = 0.0) -> tuple[Study, float]:
-    """A one-sided exact binomial study and the p-value that x of n gives, by scipy; the p-value tells the count exactly."""
+    """A one-sided exact binomial study and the p-value of x of n by scipy, which tells the count exactly."""
     from scipy import stats
 
     made = study(OneProportion(n=n), prior, Significance(sides="higher"), spike=spike, null=null)
     return made, float(stats.binom.sf(x - 1, n, null))
 
 
-def after_count(x: int, n: int, null: float, prior: Distribution, *, spike: float = 0.0, mass: float = 0.95) -> Posterior:
+def after_count(
+    x: int, n: int, null: float, prior: Distribution, *, spike: float = 0.0, mass: float = 0.95
+) -> Posterior:
     """The posterior after x of n, as `interpret` finds it from the p-value alone."""
     made, p = count_study(x, n, null, prior, spike=spike)
     return posterior_by_integration(made, n, p_value_evidence(made, n, p, 17, None), mass, 1e-6)

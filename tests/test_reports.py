@@ -34,16 +34,12 @@ def drifts(new, old, at=""):
         if list(new) != list(old):
             return [f"{at}: keys {list(new)}, were {list(old)}"]
         if at == ".provenance":
-            return [
-                f"{at}.{key}: {new[key]}, was {old[key]}" for key in ("version", "seed") if new[key] != old[key]
-            ]
+            return [f"{at}.{key}: {new[key]}, was {old[key]}" for key in ("version", "seed") if new[key] != old[key]]
         return [line for key in new for line in drifts(new[key], old[key], f"{at}.{key}")]
     if isinstance(new, list) and isinstance(old, list):
         if len(new) != len(old):
             return [f"{at}: {len(new)} entries, were {len(old)}"]
-        return [
-            line for i, pair in enumerate(zip(new, old, strict=True)) for line in drifts(*pair, f"{at}[{i}]")
-        ]
+        return [line for i, pair in enumerate(zip(new, old, strict=True)) for line in drifts(*pair, f"{at}[{i}]")]
     return [] if alike(new, old, at) else [f"{at}: {new}, was {old}"]
 
 
@@ -83,9 +79,7 @@ def read(folder, name):
     return text, json.loads((folder / f"{name}.json").read_text(encoding="utf-8"))
 
 
-@pytest.mark.parametrize(
-    "name", [pytest.param(n, marks=[pytest.mark.slow] if n in SLOW else []) for n in STUDIES]
-)
+@pytest.mark.parametrize("name", [pytest.param(n, marks=[pytest.mark.slow] if n in SLOW else []) for n in STUDIES])
 def test_report_is_still_true(name, tmp_path):
     command = [sys.executable, REPORTS / "regenerate.py", name, "--into", tmp_path]
     subprocess.run(command, check=True, timeout=600, capture_output=True, text=True, cwd=tmp_path)
@@ -122,14 +116,14 @@ QUANTITIES = ("results", 0, "quantities")
         (lambda v: v * (1 + 1e-6), (*QUANTITIES, "assurance", "value")),
         (lambda v: v + 1e-7, (*QUANTITIES, "power_quantiles", "value", "0.5")),
         (lambda v: v + 1e-7, ("results", 0, "decision_table", "joint", 0, 0)),
-        (lambda v: None, (*QUANTITIES, "type_s_rate", "value")),
-        (lambda v: 1e-9, (*QUANTITIES, "assurance", "error")),
+        (lambda _: None, (*QUANTITIES, "type_s_rate", "value")),
+        (lambda _: 1e-9, (*QUANTITIES, "assurance", "error")),
         (lambda v: v + 1, ("results", 0, "n")),
         (lambda v: v[:-1], ("messages",)),
         (lambda v: v + " ", ("messages", 0, "text")),
         (lambda v: v[::-1], ("study", "sha256")),
         (lambda v: v + 1, ("provenance", "seed")),
-        (lambda v: {}, (*QUANTITIES, "expected_power")),
+        (lambda _: {}, (*QUANTITIES, "expected_power")),
     ],
 )
 def test_a_drift_is_found(value, keys):
@@ -142,8 +136,8 @@ def test_a_drift_is_found(value, keys):
     [
         (lambda v: v * (1 + 1e-9), (*QUANTITIES, "assurance", "value")),
         (lambda v: v * 3, (*QUANTITIES, "exaggeration_median", "error")),
-        (lambda v: 4e-12, (*QUANTITIES, "assurance", "error")),
-        (lambda v: "3.99.0", ("provenance", "python")),
+        (lambda _: 4e-12, (*QUANTITIES, "assurance", "error")),
+        (lambda _: "3.99.0", ("provenance", "python")),
     ],
 )
 def test_last_bits_and_versions_of_others_are_no_drift(value, keys):
@@ -154,9 +148,9 @@ def test_last_bits_and_versions_of_others_are_no_drift(value, keys):
 @pytest.mark.parametrize(
     ("value", "keys"),
     [
-        (lambda v: 2e-6, (*QUANTITIES, "assurance", "error")),
-        (lambda v: 6e-3, (*QUANTITIES, "power_quantiles", "error", "0.5")),
-        (lambda v: float("nan"), (*QUANTITIES, "type_s_rate", "error")),
+        (lambda _: 2e-6, (*QUANTITIES, "assurance", "error")),
+        (lambda _: 6e-3, (*QUANTITIES, "power_quantiles", "error", "0.5")),
+        (lambda _: float("nan"), (*QUANTITIES, "type_s_rate", "error")),
     ],
 )
 def test_an_error_beyond_the_tolerance_is_found(value, keys):

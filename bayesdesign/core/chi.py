@@ -15,6 +15,7 @@ LAGUERRE_FROM_DF = 60.0  # above it u is so narrow that every integrand met here
 ROUGH_FROM_DF = 10.0  # the same where absolute accuracy is enough, as for pairs of sds
 LEAST_EDGE = 1e-9  # a level of one half has its bound at 0, where u makes no edge at all
 OUTSIDE = 1e-26  # chi-square mass left out on either side of the panels
+ROUGH_OUTSIDE = 1e-15
 
 
 def sd_ratio_nodes(
@@ -27,9 +28,10 @@ def sd_ratio_nodes(
     makes an edge of width 1 / critical in u, and the panels must resolve it. `order` is the number of nodes in a panel.
     `rough` gives up the digits of probabilities far below 1e-8, and needs fewer nodes.
     """
-    threshold, more = (ROUGH_FROM_DF, 8) if rough else (LAGUERRE_FROM_DF, 16)
+    threshold, more, outside = (ROUGH_FROM_DF, 8, ROUGH_OUTSIDE) if rough else (LAGUERRE_FROM_DF, 16, OUTSIDE)
+    fewer = max(8, 2 * order // 3) if rough else order
     parts = [
-        _laguerre(d, order + more) if d >= threshold else _panels(d, max(abs(c), LEAST_EDGE), order)
+        _laguerre(d, order + more) if d >= threshold else _panels(d, max(abs(c), LEAST_EDGE), fewer, outside)
         for d, c in zip(df, critical, strict=True)
     ]
     width = max(len(nodes) for nodes, _ in parts)
@@ -49,10 +51,10 @@ def _laguerre(df: float, order: int) -> tuple[FloatArray, FloatArray]:
     return np.sqrt(2 * values / df), vectors[0] ** 2
 
 
-def _panels(df: float, critical: float, order: int) -> tuple[FloatArray, FloatArray]:
+def _panels(df: float, critical: float, order: int, outside: float) -> tuple[FloatArray, FloatArray]:
     """Composite Gauss-Legendre where the chi density or the edge of a region is too sharp for one polynomial."""
-    low = np.sqrt(2 * special.gammaincinv(df / 2, OUTSIDE) / df)
-    high = np.sqrt(2 * special.gammainccinv(df / 2, OUTSIDE) / df)
+    low = np.sqrt(2 * special.gammaincinv(df / 2, outside) / df)
+    high = np.sqrt(2 * special.gammainccinv(df / 2, outside) / df)
     step, edges = min(2.0 / np.sqrt(2 * df), 3.0 / critical), [low]
     while edges[-1] < high:
         # beyond 60 standard errors an edge is wide against its distance, so panels may grow with u

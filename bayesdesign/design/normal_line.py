@@ -1,6 +1,6 @@
 """Outcomes whose estimate is normal around the truth, given an estimated or known standard error."""
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from typing import Literal, final
 
@@ -12,7 +12,7 @@ from bayesdesign.core.errors import NotOffered
 from bayesdesign.core.region import Region
 from bayesdesign.design.base import Analysis, Outcomes, Side, Tails
 
-CHUNK = 4_000_000  # elements of one work array: about 32 MB
+CHUNK = 60_000  # elements of one work array: about half a megabyte
 
 
 def _identity(x: FloatArray) -> FloatArray:
@@ -53,20 +53,25 @@ class NormalLine(Outcomes):
 
     def measure(self, effect: FloatArray, lower: FloatArray, upper: FloatArray) -> tuple[FloatArray, FloatArray]:
         theta = self.working(effect)
-        shape = (len(lower), *theta.shape)
-        mass, moment = np.zeros(shape), np.zeros(shape)
-        step = max(1, CHUNK // max(1, theta[0].size * self.weight.shape[1]))
-        for start in range(0, len(theta), step):
-            rows = slice(start, start + step)
+        mass, moment = np.zeros((len(lower), *theta.shape)), np.zeros((len(lower), *theta.shape))
+        for n, columns in self._blocks(theta):
             for i in range(len(lower)):
-                cut = [b[i, rows] if b.shape[1] > 1 else b[i] for b in (lower, upper)]
-                mass[i, rows], moment[i, rows] = self._measure(theta[rows], rows, *cut)
+                bounds = (_cut(bound[i], n, columns) for bound in (lower, upper))
+                at = (i, n, columns)
+                mass[at], moment[at] = self._measure(theta[n, columns], n, columns, *bounds)
         return mass, moment
 
+    def _blocks(self, theta: FloatArray) -> Iterator[tuple[int, slice]]:
+        """One size and some nuisance nodes at a time, so that the work arrays stay in the processor's cache."""
+        step = max(1, CHUNK // max(1, theta.shape[2] * self.weight.shape[1]))
+        for n in range(len(theta)):
+            for start in range(0, theta.shape[1], step):
+                yield n, slice(start, start + step)
+
     def _measure(
-        self, theta: FloatArray, rows: slice, lower: FloatArray, upper: FloatArray
+        self, theta: FloatArray, n: int, columns: slice, lower: FloatArray, upper: FloatArray
     ) -> tuple[FloatArray, FloatArray]:
-        se = self.se[rows, :, None, None]
+        se = self.se[n, columns, None, None]
         low, high = (lower - theta[..., None]) / se, (upper - theta[..., None]) / se
         if np.isposinf(upper).all():
             mass, slope = special.ndtr(-low), np.exp(-low * low / 2)
@@ -79,29 +84,31 @@ class NormalLine(Outcomes):
                 mirror = low + high > 0
             mass = special.ndtr(np.where(mirror, -low, high)) - special.ndtr(np.where(mirror, -high, low))
             slope = np.exp(-low * low / 2) - np.exp(-high * high / 2)
-        weight = self.weight[rows, None, None, :]
-        mass, slope = (mass * weight).sum(axis=-1), (slope * weight).sum(axis=-1) / np.sqrt(2 * np.pi)
-        return mass, (theta - self.null) * mass + self.se[rows, :, None] * slope
+        mass, slope = self._averaged(mass, n), self._averaged(slope, n) / np.sqrt(2 * np.pi)
+        return mass, (theta - self.null) * mass + self.se[n, columns, None] * slope
+
+    def _averaged(self, values: FloatArray, n: int) -> FloatArray:
+        """Mean over the auxiliary nodes, on the last axis (of length 1 where nothing depends on them)."""
+        return np.asarray(values @ self.weight[n] if values.shape[-1] > 1 else values[..., 0])
 
     def probabilities_within(self, effect: FloatArray, regions: Sequence[Region], reach: FloatArray) -> FloatArray:
         # absolute accuracy is enough here, and half of the normal integrals do not depend on the auxiliary node
-        theta, se = self.working(effect)[..., None], self.se[..., None, None]
-        near, far = ((self.null + sign * reach[..., None] - theta) / se for sign in (-1, 1))
-        at_near, at_far = special.ndtr(near), special.ndtr(far)
+        theta = self.working(effect)
         total = np.zeros(effect.shape)
-        for region in regions:
-            for lower, upper in zip(region.lower, region.upper, strict=True):
-                low = (
-                    at_near
-                    if np.isneginf(lower).all()
-                    else np.maximum(at_near, special.ndtr((lower[..., None, :] - theta) / se))
-                )
-                high = (
-                    at_far
-                    if np.isposinf(upper).all()
-                    else np.minimum(at_far, special.ndtr((upper[..., None, :] - theta) / se))
-                )
-                total += (np.maximum(high - low, 0.0) * self.weight[:, None, None, :]).sum(axis=-1)
+        for n, columns in self._blocks(theta):
+            centre, se = theta[n, columns, :, None], self.se[n, columns, None, None]
+            at_near, at_far = (
+                special.ndtr((self.null + sign * reach[n, columns, :, None] - centre) / se) for sign in (-1, 1)
+            )
+            for region in regions:
+                for bounds in zip(region.lower, region.upper, strict=True):
+                    lower, upper = (_cut(bound[..., None, :], n, columns) for bound in bounds)
+                    low, high = at_near, at_far
+                    if not np.isneginf(lower).all():
+                        low = np.maximum(low, special.ndtr((lower - centre) / se))
+                    if not np.isposinf(upper).all():
+                        high = np.minimum(high, special.ndtr((upper - centre) / se))
+                    total[n, columns] += self._averaged(np.maximum(high - low, 0.0), n)
         return total
 
     def landmarks(self, regions: Sequence[Region], multiple: FloatArray | None = None) -> FloatArray:
@@ -123,6 +130,12 @@ class NormalLine(Outcomes):
                 near = np.concatenate([low, middle, high], axis=2) - self.null
                 points += [self.null + near / multiple[:, None, None], self.null - near / multiple[:, None, None]]
         return self.natural(np.concatenate(points, axis=2)) if points else np.empty((*self.se.shape, 0))
+
+
+def _cut(bound: FloatArray, n: int, columns: slice) -> FloatArray:
+    """Bounds (N or 1, M or 1, K or 1, A or 1) of one size and some nuisance nodes."""
+    row = bound[n if bound.shape[0] > 1 else 0]
+    return row[columns] if row.shape[0] > 1 else row
 
 
 def critical_value(df: FloatArray, level: float) -> FloatArray:

@@ -19,6 +19,9 @@ from bayesdesign.prior.base import Distribution
 from bayesdesign.prior.point import Point
 
 
+PRUNED = 1e-13  # pairs of sample sds less likely than this are left out
+
+
 @final
 @dataclass(frozen=True, kw_only=True)
 class TwoMeans(Design):
@@ -187,6 +190,8 @@ def _welch_line(
     sides = [sd_ratio_nodes(d[:, 0], critical, accuracy.auxiliary, rough=True) for d in df]
     pairs = [np.broadcast_arrays(a[:, :, None], b[:, None, :]) for a, b in zip(*sides, strict=True)]
     (u, v), (weight_u, weight_v) = ([x.reshape(len(x), -1) for x in pair] for pair in pairs)
+    keep = (weight_u * weight_v > PRUNED).any(axis=0)
+    u, v, weight_u, weight_v = (x[:, keep] for x in (u, v, weight_u, weight_v))
     a, b = variances[0][..., None] * u[:, None, :] ** 2, variances[1][..., None] * v[:, None, :] ** 2
     return NormalLine(
         se=se,

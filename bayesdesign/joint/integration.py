@@ -13,8 +13,9 @@ from bayesdesign.joint.table import Joint
 from bayesdesign.prior.nodes import nuisance_nodes, variable_nodes
 from bayesdesign.study.study import Study
 
-# Nodes per panel at each refinement: (effect, nuisance, auxiliary). A result is compared with the level before it.
-LEVELS = ((8, 8, 12), (12, 12, 16), (16, 18, 22), (20, 27, 28), (12, 6, 34), (16, 9, 40))
+# Each refinement: nodes per panel of the effect, nodes of the Gauss rule of each nuisance, nodes per auxiliary panel.
+# A result is compared with the level before it.
+LEVELS = ((8, 8, 12), (12, 12, 16), (16, 18, 22), (20, 27, 28), (20, 40, 34), (24, 60, 40))
 WEIGHTLESS = 1e-18
 PANELS_FROM = 4  # level from which nuisance parameters are integrated by composite panels
 
@@ -64,14 +65,18 @@ class Setting:
         return self.outcomes.probabilities(effect, self.regions)
 
 
-def set_up(study: Study, n: Sequence[int | None], level: int) -> Setting:
-    """Prepare the outcomes and regions of a study at these sizes."""
+def set_up(study: Study, n: Sequence[int | None], level: int, fine_nuisance: int | None = None) -> Setting:
+    """Prepare the outcomes and regions of a study at these sizes; `fine_nuisance` nodes to a panel of the nuisances."""
     effect, nuisance_order, auxiliary = LEVELS[level]
     accuracy = Accuracy(
         effect=effect, nuisance=nuisance_order, auxiliary=auxiliary, finest_level=study.rule.finest_level
     )
+    if fine_nuisance is None:
+        order, panels = nuisance_order, False
+    else:
+        order, panels = fine_nuisance, True
     nuisance, weight = nuisance_nodes(
-        study.design.nuisance, nuisance_order, panels=level >= PANELS_FROM, kinks=_nuisance_kinks(study)
+        study.design.nuisance, order, panels=panels, kinks=_nuisance_kinks(study), scales=_scales(study)
     )
     sizes = np.array([1.0 if k is None else float(k) for k in n])
     outcomes = study.design.outcomes(sizes, nuisance, study.null, accuracy)
@@ -84,6 +89,11 @@ def set_up(study: Study, n: Sequence[int | None], level: int) -> Setting:
         outcomes=outcomes,
         regions=study.rule.regions(outcomes, study.null),
     )
+
+
+def _scales(study: Study) -> list[str]:
+    """Nuisance parameters that can be any positive number."""
+    return [name for name in study.design.nuisance if np.isinf(study.design.nuisance_bounds(name)[1])]
 
 
 def _nuisance_kinks(study: Study) -> dict[str, FloatArray]:

@@ -10,10 +10,10 @@ import numpy as np
 
 from bayesdesign.core.arrays import BoolArray, FloatArray
 from bayesdesign.core.errors import StudyError
-from bayesdesign.joint.integration import LEVELS, integrate, set_up
+from bayesdesign.joint.integration import LEVELS, Setting, integrate, set_up
 from bayesdesign.joint.median import median_multiple
 from bayesdesign.joint.numbers import POWER_LEVELS, Number, Numbers, missing
-from bayesdesign.joint.power import power_quantiles
+from bayesdesign.joint.power import FLAT, power_quantiles
 from bayesdesign.joint.table import Cells, Joint, cells
 from bayesdesign.measures.ratios import Ratio, planning_readings, readings
 from bayesdesign.prior.point import Point
@@ -24,6 +24,7 @@ COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is
 MEMORY = 0.15  # share of the change before that is kept in the error of designs with counts
 ROUNDING = 1e-13  # what accumulates in sums of some hundred terms, relative to the condition's probability
 
+NO_MEAN = "the prior has no mean, so the ratio of expectations does not exist; see the median"
 NO_CLAIM = "the rule never claims an effect that is not exactly null"
 
 type Reader = Callable[[Cells, Study], dict[str, Ratio]]
@@ -31,11 +32,19 @@ type Reader = Callable[[Cells, Study], dict[str, Ratio]]
 
 def integrated(study: Study, n: Sequence[int | None], tolerance: float) -> Numbers:
     """Every quantity of the study at these sizes, by integration."""
-    main = refine(study, n, readings, tolerance)
+    main = refine(study, n, _existing, tolerance)
     by_name = dict(main.numbers)
     by_name |= _planning(study, n, tolerance)
     by_name |= _distributions(study, main)
     return Numbers(by_name=by_name, cells=main.cells, cells_error=main.cells_error, joint=main.joint)
+
+
+def _existing(sums: Cells, study: Study) -> dict[str, Ratio]:
+    """The readings whose expectations exist; an infinite one would never stand still."""
+    every = readings(sums, study)
+    if not np.isfinite(study.prior.variable.expectation()):
+        del every["exaggeration_ratio"]
+    return every
 
 
 @final
@@ -132,18 +141,10 @@ def at_planning_value(study: Study) -> Study | str:
 
 def _distributions(study: Study, main: Refined) -> dict[str, Number]:
     """The median exaggeration and the quantiles of power, which are no ratios of sums."""
-    ratio = main.numbers["exaggeration_ratio"]
-    why = ratio.why_null
-    if not np.isfinite(study.prior.variable.expectation()):
-        why = "the prior has no mean, so the ratio of expectations does not exist; see the median"
-        ratio = missing(len(ratio.value), why)
-    fine, coarse = set_up(study, main.joint.n, main.level), set_up(study, main.joint.n, main.level - 1)
-    if (
-        fine.outcomes.rough_error or fine.outcomes.stepped
-    ):  # more nodes cost much and gain little where the probability jumps at every count
-        fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
-    power = power_quantiles(fine, POWER_LEVELS)
-    change = np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + ROUNDING
+    ratio = main.numbers.get("exaggeration_ratio", missing(len(main.joint.n), NO_MEAN))
+    # a search costs many tables, and the two coarsest already agree to six digits
+    fine, coarse = set_up(study, main.joint.n, 1), set_up(study, main.joint.n, 0)
+    power, change = _power(study, main.joint.n, fine, coarse)
     near = median_multiple(coarse)
     median = median_multiple(fine, near)
     rough = fine.outcomes.rough_error
@@ -153,6 +154,15 @@ def _distributions(study: Study, main: Refined) -> dict[str, Number]:
         "exaggeration_median": Number(median, change_of_median, NO_CLAIM),
         "power_quantiles": Number(power, change),
     }
+
+
+def _power(study: Study, n: Sequence[int | None], fine: Setting, coarse: Setting) -> tuple[FloatArray, FloatArray]:
+    """Quantiles of power and their change from a coarser grid."""
+    uncertain = [belief for belief in study.design.nuisance.values() if belief.breaks().size]
+    if len(uncertain) == 1:  # a distribution over few nodes of the nuisance has steps: take panels, and many nodes
+        fine, coarse = set_up(study, n, 1, fine_nuisance=4), set_up(study, n, 0, fine_nuisance=3)
+    power = power_quantiles(fine, POWER_LEVELS)
+    return power, np.abs(power - power_quantiles(coarse, POWER_LEVELS)) + FLAT
 
 
 def _change(now: FloatArray, before: FloatArray) -> FloatArray:

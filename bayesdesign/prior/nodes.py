@@ -1,6 +1,6 @@
 """Nodes and weights of a belief: composite Gauss-Legendre panels on the smooth pieces, point masses as they are."""
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 
 import numpy as np
 
@@ -63,12 +63,13 @@ def nuisance_nodes(
     *,
     panels: bool = False,
     kinks: Mapping[str, FloatArray] | None = None,
+    scales: Collection[str] = (),
 ) -> tuple[dict[str, FloatArray], FloatArray]:
     """Product nodes of independent nuisance parameters, each (M,), with weights (M,) that sum to 1.
 
     By default the `order`-point Gauss rule of each distribution itself, which is enough where the answer varies
     smoothly with the parameter; with `panels`, or where `kinks` lie inside a distribution, composite panels of
-    `order` nodes, for answers that bend sharply.
+    `order` nodes, for answers that bend sharply. Parameters named in `scales` are taken on the log scale.
     """
     grids: list[FloatArray] = []
     weight = np.ones(1)
@@ -76,24 +77,25 @@ def nuisance_nodes(
         cuts = (kinks or {}).get(name, np.empty(0))
         cuts = cuts[(belief.cdf(cuts) > NEGLIGIBLE) & (belief.sf(cuts) > NEGLIGIBLE)]
         cut = cuts.size > 0 and not panels
-        x, w = _one_nuisance(belief, max(3, order // 3) if cut else order, cuts, panels or cut)
+        x, w = _one_nuisance(belief, max(3, order // 3) if cut else order, cuts, panels or cut, name in scales)
         grids = [np.repeat(g, len(x)) for g in grids] + [np.tile(x, len(weight))]
         weight = np.repeat(weight, len(x)) * np.tile(w, len(weight))
     keep = weight > NEGLIGIBLE
     return dict(zip(nuisance, (g[keep] for g in grids), strict=True)), weight[keep] / weight[keep].sum()
 
 
-def _one_nuisance(belief: Distribution, order: int, cuts: FloatArray, panels: bool) -> tuple[FloatArray, FloatArray]:
+def _one_nuisance(
+    belief: Distribution, order: int, cuts: FloatArray, panels: bool, scale: bool
+) -> tuple[FloatArray, FloatArray]:
     everywhere = np.full(1, -np.inf), np.full(1, np.inf)
-    x, w = (a[0, 0] for a in variable_nodes(belief, cuts[None, None], *everywhere, order if panels else 12))
+    x, w = (a[0, 0] for a in variable_nodes(belief, cuts[None, None], *everywhere, order if panels else max(12, order)))
     keep = w > NEGLIGIBLE
     x, w = x[keep], w[keep] / w[keep].sum()
     if panels or len(x) <= order:
         return x, w
-    low, high = belief.support
-    if low >= 0 and np.isinf(high):  # a scale: its logarithm is the natural variable of a polynomial
-        logs, weights = gauss_rule(np.log(x), w, order)
-        return np.exp(logs), weights
+    if scale:
+        values, weights = gauss_rule(np.log(x), w, order)
+        return np.exp(values), weights
     return gauss_rule(x, w, order)
 
 

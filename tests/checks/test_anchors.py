@@ -1,10 +1,13 @@
 """Anchors whose figures were computed once with scipy; each closed form is computed again here, and both must hold.
 
-Setting of most of them: prior N(0.3, 0.2^2) on a difference of means with sd 1 and 100 per arm, z test, two-sided 5%. The figures
-are printed with seven decimals.
+Setting of most of them: prior N(0.3, 0.2^2) on a difference of means with sd 1 and 100 per arm, z test, two-sided 5%.
+The figures are printed with seven decimals.
 """
 
 import math
+from collections.abc import Callable
+from itertools import pairwise
+from typing import Any
 
 import numpy as np
 import pytest
@@ -28,7 +31,7 @@ PRINTED = 5.1e-8  # half a unit of the seventh decimal
 CLOSED = 1e-8
 
 
-def setting(**question: object) -> Study:
+def setting(**question: Any) -> Study:
     return study(DESIGN, BELIEF, TWO_SIDED, favourable="higher", **question)
 
 
@@ -36,14 +39,14 @@ def up(theta: float) -> float:
     return float(special.ndtr(theta / S - Z))
 
 
-def over_prior(function: object, low: float, high: float) -> float:
+def over_prior(function: Callable[[float], float], low: float, high: float) -> float:
     """Integral over the prior by scipy's adaptive rule, in pieces."""
     edges = np.unique(np.clip([low, -0.5, 0.0, 0.1, 0.3, 0.5, high], low, high))
     parts = [
-        integrate.quad(lambda x: function(x) * stats.norm.pdf(x, M, T), a, b, epsabs=1e-13)[0]  # type: ignore[operator]
-        for a, b in zip(edges[:-1], edges[1:], strict=True)
+        integrate.quad(lambda x: function(x) * stats.norm.pdf(x, M, T), a, b, epsabs=1e-13)[0]
+        for a, b in pairwise(edges)
     ]
-    return sum(parts)
+    return float(sum(parts))
 
 
 def both(found: float, printed: float, closed: float, printed_tolerance: float = PRINTED) -> None:
@@ -83,7 +86,11 @@ def test_anchor_4_assurance_with_the_right_sign() -> None:
     both(value(made, "assurance_true_effect"), 0.5364998, joint)
     both(value(made, "expected_power"), 0.5749078, joint / special.ndtr(1.5))
     right = joint + over_prior(lambda x: up(-x), -3.0, 0.0)
-    both(value(study(DESIGN, BELIEF, favourable="either"), "assurance") * (1 - value(made, "type_s_rate")), 0.5445104, right)
+    both(
+        value(study(DESIGN, BELIEF, favourable="either"), "assurance") * (1 - value(made, "type_s_rate")),
+        0.5445104,
+        right,
+    )
 
 
 def test_anchor_5_distribution_of_power() -> None:
@@ -170,7 +177,9 @@ def test_anchor_11_cells_with_a_zone() -> None:
     ("signal", "type_s", "exaggeration", "median"),
     [(0.5, 0.0878352, 4.788594, 4.575797), (1.0, 0.0090453, 2.490928, 2.374343), (2.0, 0.00007264, 1.386265, 1.324760)],
 )
-def test_anchor_12_sign_and_size_at_a_fixed_effect(signal: float, type_s: float, exaggeration: float, median: float) -> None:
+def test_anchor_12_sign_and_size_at_a_fixed_effect(
+    signal: float, type_s: float, exaggeration: float, median: float
+) -> None:
     quantities = answer(study(estimate_with(1.0), Point(value=signal), planning_value=signal)).quantities
     above, below = special.ndtr(signal - Z), special.ndtr(-signal - Z)
     size_of = (signal * (above - below) + stats.norm.pdf(Z - signal) + stats.norm.pdf(Z + signal)) / (above + below)
@@ -182,13 +191,16 @@ def test_anchor_12_sign_and_size_at_a_fixed_effect(signal: float, type_s: float,
     assert found == pytest.approx(median, abs=5.1e-7)
     assert isinstance(found, float)
     reach = found * signal
-    within = special.ndtr(reach - signal) - special.ndtr(Z - signal) + special.ndtr(-Z - signal) - special.ndtr(-reach - signal)
+    within = (
+        special.ndtr(reach - signal)
+        - special.ndtr(Z - signal)
+        + special.ndtr(-Z - signal)
+        - special.ndtr(-reach - signal)
+    )
     assert within / (above + below) == pytest.approx(0.5, abs=CLOSED)
 
 
-@pytest.mark.parametrize(
-    ("mean", "type_s", "ratio"), [(0.3, 0.0033483, 1.1506526), (0.0, 0.0196658, 1.4901171)]
-)
+@pytest.mark.parametrize(("mean", "type_s", "ratio"), [(0.3, 0.0033483, 1.1506526), (0.0, 0.0196658, 1.4901171)])
 def test_anchors_13_and_14_sign_and_size_over_a_prior(mean: float, type_s: float, ratio: float) -> None:
     quantities = answer(study(DESIGN, Normal(mean=mean, sd=T))).quantities
     assert quantities["type_s_rate"].value == pytest.approx(type_s, abs=PRINTED)

@@ -20,7 +20,9 @@ OHAGAN = Normal(mean=0.2, sd=0.2449489742783178)  # variance 0.06
 
 def test_assurance_of_400_per_arm_is_595_in_1000() -> None:
     # O'Hagan, Stevens & Campbell, Pharmaceutical Statistics 2005, known-variance superiority example (from memory)
-    assert value(study(two_means(400, analysis="z"), OHAGAN, ONE_SIDED), "assurance") == pytest.approx(0.595, abs=0.0005)
+    assert value(study(two_means(400, analysis="z"), OHAGAN, ONE_SIDED), "assurance") == pytest.approx(
+        0.595, abs=0.0005
+    )
 
 
 def test_power_at_the_prior_mean_of_that_example() -> None:
@@ -92,7 +94,7 @@ class TestUncertainPower:
     )
 
     def power(self, level: float) -> float:
-        """The quantile of power at `level` when a negative sd is counted as high power, as the source's ratio of normals does."""
+        """The quantile of power at `level` when a negative sd counts as high power, as in the source's ratio."""
         possible = stats.norm.sf(-1 / 0.3)
         return float(power_quantiles(set_up(self.made, [63], 3), (level / possible,))[0, 0])
 
@@ -182,7 +184,8 @@ def test_numerator_of_the_rule_of_sixteen() -> None:
 
 @pytest.mark.parametrize(("r", "printed"), [(0.1, 783), (0.2, 194), (0.3, 85), (0.4, 47)])
 def test_n_to_detect_a_correlation_by_fisher_z(r: float, printed: int) -> None:
-    # Hulley et al., Designing Clinical Research, appendix table 6C; Cohen 1992 table 2 (from memory). Var(z) = 1 / (n - 3)
+    # Hulley et al., Designing Clinical Research, appendix table 6C; Cohen 1992 table 2 (from memory). Var(z) = 1 / (n
+    # - 3)
     assert _needed(Estimate(n=10, unit_sd=Point(value=1.0)), Significance(), math.atanh(r), 0.8) + 3 == printed
 
 
@@ -192,10 +195,13 @@ def test_events_for_a_log_rank_test_of_hazard_ratio_2() -> None:
 
 
 def test_deaths_for_a_log_rank_test_of_hazard_ratio_057() -> None:
-    # Collett, Modelling Survival Data in Medical Research, hepatitis example (from memory), rounded from 133.02 to 133, so that 133 is
-    # where the power comes nearest 90%
+    # Collett, Modelling Survival Data in Medical Research, hepatitis example (from memory), rounded from 133.02 to
+    # 133, so that 133 is where the power comes nearest 90%
     made = study(
-        Estimate(n=10, unit_sd=Point(value=2.0)), Normal(mean=0.0, sd=1.0), favourable="lower", planning_value=np.log(0.57)
+        Estimate(n=10, unit_sd=Point(value=2.0)),
+        Normal(mean=0.0, sd=1.0),
+        favourable="lower",
+        planning_value=np.log(0.57),
     )
     miss = {n: abs(value(made, "power_at_planning_value", n) - 0.9) for n in (132, 133, 134)}
     assert min(miss, key=lambda n: miss[n]) == 133

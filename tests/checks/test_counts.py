@@ -1,5 +1,7 @@
 """Counts: exact designs, limits by inverting the tests, Fisher's test and assurance by enumeration."""
 
+from typing import Literal
+
 import numpy as np
 import pytest
 from scipy import stats
@@ -44,7 +46,14 @@ def test_critical_counts_and_sizes_of_the_sign_test(n: int, count: int, printed_
 
 @pytest.mark.parametrize(
     ("p0", "p1", "n", "r"),
-    [(0.05, 0.2, 27, 4), (0.05, 0.25, 16, 3), (0.1, 0.3, 25, 6), (0.2, 0.4, 35, 12), (0.3, 0.5, 39, 17), (0.5, 0.7, 37, 24)],
+    [
+        (0.05, 0.2, 27, 4),
+        (0.05, 0.25, 16, 3),
+        (0.1, 0.3, 25, 6),
+        (0.2, 0.4, 35, 12),
+        (0.3, 0.5, 39, 17),
+        (0.5, 0.7, 37, 24),
+    ],
 )
 def test_exact_single_stage_designs(p0: float, p1: float, n: int, r: int) -> None:
     # A'Hern, Statistics in Medicine 20:859-866, 2001, exact single-stage tables (from memory)
@@ -113,15 +122,19 @@ def test_largest_share_compatible_with_no_event(n: int, limit: float, tolerance:
     ("bad", "level", "failures", "n"),
     [
         # Success-run theorem, e.g. Lipson & Sheth 1973; standard reliability practice (from memory)
-        (0.1, 0.1, 0, 22), (0.1, 0.05, 0, 29), (0.05, 0.1, 0, 45), (0.05, 0.05, 0, 59), (0.01, 0.05, 0, 299), (0.01, 0.1, 0, 230),
+        (0.1, 0.1, 0, 22), (0.1, 0.05, 0, 29), (0.05, 0.1, 0, 45),
+        (0.05, 0.05, 0, 59), (0.01, 0.05, 0, 299), (0.01, 0.1, 0, 230),
         # Wilks sample sizes and binomial demonstration tables (from memory)
-        (0.1, 0.1, 1, 38), (0.1, 0.05, 1, 46), (0.05, 0.05, 1, 93), (0.01, 0.05, 1, 473), (0.05, 0.05, 2, 124), (0.1, 0.05, 2, 61),
+        (0.1, 0.1, 1, 38), (0.1, 0.05, 1, 46), (0.05, 0.05, 1, 93),
+        (0.01, 0.05, 1, 473), (0.05, 0.05, 2, 124), (0.1, 0.05, 2, 61),
         # MIL-S-19500 / MIL-M-38510 LTPD sampling table, columns 10 and 20 (from memory)
-        (0.1, 0.1, 2, 52), (0.1, 0.1, 3, 65), (0.1, 0.1, 4, 78), (0.1, 0.1, 5, 91),
-        (0.2, 0.1, 0, 11), (0.2, 0.1, 1, 18), (0.2, 0.1, 2, 25), (0.2, 0.1, 3, 32), (0.2, 0.1, 4, 38), (0.2, 0.1, 5, 45),
+        (0.1, 0.1, 2, 52), (0.1, 0.1, 3, 65), (0.1, 0.1, 4, 78), (0.1, 0.1, 5, 91), (0.2, 0.1, 0, 11),
+        (0.2, 0.1, 1, 18), (0.2, 0.1, 2, 25), (0.2, 0.1, 3, 32), (0.2, 0.1, 4, 38), (0.2, 0.1, 5, 45),
     ],
 )  # fmt: skip
-def test_smallest_n_at_which_so_few_failures_demonstrate_the_share(bad: float, level: float, failures: int, n: int) -> None:
+def test_smallest_n_at_which_so_few_failures_demonstrate_the_share(
+    bad: float, level: float, failures: int, n: int
+) -> None:
     assert rejects(failures, n, bad, level, "lower")
     assert not rejects(failures, n - 1, bad, level, "lower")
 
@@ -132,10 +145,12 @@ def test_passing_a_zero_failure_demonstration_under_a_prior() -> None:
     assert value(made, "assurance") == pytest.approx(0.5769230769, abs=1e-8)
 
 
-@pytest.mark.parametrize(("p", "printed"), [(0.01, 0.998), (0.02, 0.98), (0.03, 0.93), (0.04, 0.845), (0.05, 0.739), (0.06, 0.62)])
+@pytest.mark.parametrize(
+    ("p", "printed"), [(0.01, 0.998), (0.02, 0.98), (0.03, 0.93), (0.04, 0.845), (0.05, 0.739), (0.06, 0.62)]
+)
 def test_acceptance_curve_of_52_with_3_allowed(p: float, printed: float) -> None:
-    # NIST/SEMATECH e-Handbook, sec. 6.2.3.2 (.845 and .739 are printed with a last-digit slip). The one-sided 25% test of 10%
-    # defective accepts at 3 or fewer of 52.
+    # NIST/SEMATECH e-Handbook, sec. 6.2.3.2 (.845 and .739 are printed with a last-digit slip). The one-sided 25%
+    # test of 10% defective accepts at 3 or fewer of 52.
     rule = Significance(alpha=0.25, sides="lower")
     made = study(OneProportion(n=52), Beta(a=1.0, b=1.0), rule, null=0.1, planning_value=p)
     assert counts(52, 0.1).test(0.1, 0.25, "lower").upper.item() == 3.5
@@ -164,7 +179,11 @@ def fisher(x: int, n: int, y: int, m: int) -> tuple[TwoCountsAnalysis, TwoPropor
     ("table", "p", "tolerance"),
     [
         ((4, 4, 0, 4), 0.014286, 1e-6),  # Fisher, The Design of Experiments, 1935, ch. II, 1 / 70 (from memory)
-        ((10, 13, 2, 17), 0.0004652, 1e-7),  # Fisher, JRSS 1935, criminal twins (data of Lange); R's fisher.test (from memory)
+        (
+            (10, 13, 2, 17),
+            0.0004652,
+            1e-7,
+        ),  # Fisher, JRSS 1935, criminal twins (data of Lange); R's fisher.test (from memory)
         ((4, 10, 0, 9), 0.054, 0.0005),  # Ware, Statistical Science 1989, Harvard ECMO trial, phase 1 (from memory)
     ],
 )
@@ -191,8 +210,10 @@ def test_two_sided_fisher_p_value_of_the_twins_and_where_the_region_begins() -> 
 
 
 def test_chi_square_and_ratios_of_the_aspirin_trial() -> None:
-    # Physicians' Health Study; Agresti, An Introduction to Categorical Data Analysis, 1996, table 2.3, sec. 2.4 (from memory)
-    for scale, printed in (("ratio", 1.82), ("odds_ratio", 1.83)):
+    # Physicians' Health Study; Agresti, An Introduction to Categorical Data Analysis, 1996, table 2.3, sec. 2.4 (from
+    # memory)
+    scales: tuple[tuple[Literal["ratio", "odds_ratio"], float], ...] = (("ratio", 1.82), ("odds_ratio", 1.83))
+    for scale, printed in scales:
         design = TwoProportions(n_treatment=11034, n_control=11037, control=Point(value=0.01), scale=scale)
         analysis = TwoCountsAnalysis(np.array([189]), np.array([104]), 11034, 11037, design)
         assert np.exp(analysis.estimate.item()) == pytest.approx(printed, abs=0.006)

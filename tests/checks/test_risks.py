@@ -31,7 +31,9 @@ def test_four_cells_of_a_test_with_a_point_null() -> None:
     # Mixture of normal predictives
     given = answer(study(estimate_with(0.15), Normal(mean=0.4, sd=0.2), spike=0.7, favourable="higher"))
     effect = ("lower", "higher")
-    rejected = [cell(given, states, "reject_higher") + cell(given, states, "reject_lower") for states in (effect, ["null"])]
+    rejected = [
+        cell(given, states, "reject_higher") + cell(given, states, "reject_lower") for states in (effect, ["null"])
+    ]
     assert rejected == pytest.approx([0.2000930299, 0.035], abs=1e-8)
     assert cell(given, effect, "not_reject") == pytest.approx(0.09990697009, abs=1e-8)
     assert cell(given, ["null"], "not_reject") == pytest.approx(0.665, abs=1e-8)
@@ -39,7 +41,8 @@ def test_four_cells_of_a_test_with_a_point_null() -> None:
 
 
 def test_false_discoveries_of_the_tree_diagram() -> None:
-    # Colquhoun, Royal Society Open Science 2014, tree diagram (45 of 125; the misses 20 of 875 follow from the same counts)
+    # Colquhoun, Royal Society Open Science 2014, tree diagram (45 of 125; the misses 20 of 875 follow from the same
+    # counts)
     z = stats.norm.isf(0.025)
     effect = optimize.brentq(lambda t: stats.norm.sf(z - t) + stats.norm.cdf(-z - t) - 0.8, 2.0, 4.0, xtol=1e-14)
     given = answer(study(estimate_with(1.0), Point(value=effect), spike=0.9))
@@ -65,8 +68,8 @@ def test_false_positive_risk_of_p_exactly_005() -> None:
 
 
 def test_false_positive_risk_of_p_exactly_005_with_a_tenth_of_effects_real() -> None:
-    # Bayes rule with the noncentral t density ratio (setting of Colquhoun 2017, who prints 76%). The ratio there is the density at
-    # one sign over that at both, so the side known here needs half the prior odds.
+    # Bayes rule with the noncentral t density ratio (setting of Colquhoun 2017, who prints 76%). The ratio there is
+    # the density at one sign over that at both, so the side known here needs half the prior odds.
     made = study(two_means(16), Point(value=1.0), spike=18 / 19)
     after = interpret(made, p_value="0.05", decision="reject_higher").posterior
     assert after.states["null"] == pytest.approx(0.7655365008, abs=1e-8)
@@ -74,7 +77,7 @@ def test_false_positive_risk_of_p_exactly_005_with_a_tenth_of_effects_real() -> 
 
 
 def after_z(z: float, alternative: Distribution, n: float = 1.0) -> float:
-    """Posterior probability of the null after z, from an even start; `alternative` is the effect in units of one observation's sd."""
+    """Posterior probability of the null after z, from an even start; `alternative` in units of one observation's sd."""
     se = 1 / math.sqrt(n)
     return interpret(study(estimate_with(se), alternative, spike=0.5), estimate=z * se, se=se).posterior.states["null"]
 

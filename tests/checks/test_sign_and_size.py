@@ -15,20 +15,29 @@ def at(effect: float, se: float) -> Answer:
 
 def check(given: Answer, tolerance: dict[str, float], **printed: float) -> None:
     names = {
-        "power": "power_at_planning_value", "type_s": "type_s_at_planning_value", "exaggeration": "exaggeration_at_planning_value",
-    }  # fmt: skip
+        "power": "power_at_planning_value",
+        "type_s": "type_s_at_planning_value",
+        "exaggeration": "exaggeration_at_planning_value",
+    }
     for key, figure in printed.items():
         assert given.quantities[names[key]].value == pytest.approx(figure, abs=tolerance[key]), key
 
 
 def test_beauty_and_relationship_example() -> None:
-    # Gelman & Carlin 2014, second example (from memory); its simulated exaggeration ratio 9.7 is not used (exactly 9.54)
+    # Gelman & Carlin 2014, second example (from memory); its simulated exaggeration ratio 9.7 is not used (exactly
+    # 9.54)
     check(at(2.0, 8.1), {"power": 0.005, "type_s": 0.005}, power=0.06, type_s=0.24)
 
 
 def test_sex_ratio_example() -> None:
     # Gelman & Carlin 2014, sex-ratio example, published from simulation (from memory)
-    check(at(0.1, 3.28), {"power": 0.005, "type_s": 0.005, "exaggeration": 0.5}, power=0.05, type_s=0.46, exaggeration=77.0)
+    check(
+        at(0.1, 3.28),
+        {"power": 0.005, "type_s": 0.005, "exaggeration": 0.5},
+        power=0.05,
+        type_s=0.46,
+        exaggeration=77.0,
+    )
 
 
 EXACT = dict.fromkeys(("power", "type_s", "exaggeration"), 1e-6)
@@ -49,10 +58,10 @@ def test_exact_sign_and_size_errors(effect: float, se: float, power: float, type
 
 def test_signal_and_exaggeration_at_power_080() -> None:
     # Gelman & Carlin 2014, general relation of power and exaggeration (from memory)
-    power = [at(signal, 1.0).quantities["power_at_planning_value"].value for signal in (2.8 - 0.005, 2.8 + 0.005)]
-    assert power[0] is not None
-    assert power[1] is not None
-    assert power[0] < 0.8 < power[1]
+    for signal, side in ((2.8 - 0.005, -1), (2.8 + 0.005, 1)):
+        power = at(signal, 1.0).quantities["power_at_planning_value"].value
+        assert isinstance(power, float)
+        assert side * (power - 0.8) > 0
     signal = optimize.brentq(lambda t: stats.norm.sf(1.959964 - t) - 0.8, 2.0, 4.0)
     check(at(signal, 1.0), {"type_s": 0.0001, "exaggeration": 0.0055}, type_s=0.0, exaggeration=1.12)
 

@@ -86,7 +86,7 @@ def test_paired_analysis_of_the_sleep_data() -> None:
     # Student, Biometrika 6:1-25, 1908 (from memory)
     gain = DRUG_1 - DRUG_2
     design = PairedMeans(n_pairs=10, sd_difference=Point(value=1.0))
-    analysis = design.analyse({"mean": gain.mean(), "variance": gain.var(ddof=1)}, {}, 10)
+    analysis = design.analyse({"mean": np.asarray(gain.mean()), "variance": np.asarray(gain.var(ddof=1))}, {}, 10)
     p = float(analysis.p_value(0.0, "two", "central"))
     assert p == pytest.approx(0.002833, abs=6e-7)
     assert -stats.t.isf(p / 2, 9) == pytest.approx(-4.0621, abs=6e-5)
@@ -96,9 +96,9 @@ def test_welch_analysis_of_the_sleep_data() -> None:
     # Student, Biometrika 6:1-25, 1908; results as in the R data set sleep (from memory)
     design = TwoMeans(n_per_group=10, sd=Point(value=2.0), analysis="welch")
     data = {
-        "difference": DRUG_1.mean() - DRUG_2.mean(),
-        "variance_treatment": DRUG_1.var(ddof=1),
-        "variance_control": DRUG_2.var(ddof=1),
+        "difference": np.asarray(DRUG_1.mean() - DRUG_2.mean()),
+        "variance_treatment": np.asarray(DRUG_1.var(ddof=1)),
+        "variance_control": np.asarray(DRUG_2.var(ddof=1)),
     }
     analysis = design.analyse(data, {}, 10)
     assert float(analysis.df) == pytest.approx(17.776, abs=0.0006)
@@ -110,7 +110,8 @@ def test_welch_analysis_of_the_sleep_data() -> None:
 def test_pooled_t_of_the_calcium_trial() -> None:
     # Moore & McCabe, Introduction to the Practice of Statistics, calcium data (Lyle et al. 1987) (from memory)
     design = TwoMeans(n_treatment=10, n_control=11, sd=Point(value=7.0))
-    data = {"difference": 5.0 + 0.273, "variance_treatment": 8.743**2, "variance_control": 5.901**2}
+    figures = {"difference": 5.0 + 0.273, "variance_treatment": 8.743**2, "variance_control": 5.901**2}
+    data = {name: np.asarray(figure) for name, figure in figures.items()}
     p = float(design.analyse(data, {}, 10).p_value(0.0, "two", "central"))
     assert stats.t.isf(p / 2, 19) == pytest.approx(1.634, abs=0.0006)
 

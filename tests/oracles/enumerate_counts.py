@@ -1,4 +1,4 @@
-"""Count designs by plain loops over every outcome, with tests by scipy or written out by hand; shares nothing with the program."""
+"""Count designs by plain loops over every outcome, with tests by scipy or by hand; shares nothing with the program."""
 
 import math
 from collections.abc import Callable
@@ -75,20 +75,32 @@ def p_values(x: int, n: int, y: int, m: int, analysis: str, tails: str) -> tuple
     if analysis == "exact":
         table = [[x, n - x], [y, m - y]]
         greater, less = (float(stats.fisher_exact(table, alternative=a).pvalue) for a in ("greater", "less"))
-        return greater, less, float(stats.fisher_exact(table).pvalue) if tails == "minimum_likelihood" else 2 * min(greater, less)
+        return (
+            greater,
+            less,
+            float(stats.fisher_exact(table).pvalue) if tails == "minimum_likelihood" else 2 * min(greater, less),
+        )
     p, q = x / n, y / m
     pooled = (x + y) / (n + m)
-    variance = p * (1 - p) / n + q * (1 - q) / m if analysis == "z_unpooled" else pooled * (1 - pooled) * (1 / n + 1 / m)
-    if abs(p - q) < 1e-15:
-        z = 0.0
-    else:
+    variance = (
+        p * (1 - p) / n + q * (1 - q) / m if analysis == "z_unpooled" else pooled * (1 - pooled) * (1 / n + 1 / m)
+    )
+    z = 0.0
+    if abs(p - q) >= 1e-15:
         z = (p - q) / math.sqrt(variance) if variance > 0 else math.copysign(math.inf, p - q)
     greater, less = float(stats.norm.sf(z)), float(stats.norm.cdf(z))
     return greater, less, 2 * min(greater, less)
 
 
 def two_samples(
-    n: int, m: int, shares: tuple[float, float], alpha: float, sides: str, analysis: str, scale: str, tails: str = "central"
+    n: int,
+    m: int,
+    shares: tuple[float, float],
+    alpha: float,
+    sides: str,
+    analysis: str,
+    scale: str,
+    tails: str = "central",
 ) -> Sums:
     """Two binomial counts by a double loop; the null is equality."""
     total = dict.fromkeys(("higher", "lower", ""), 0.0)

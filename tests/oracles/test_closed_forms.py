@@ -2,32 +2,37 @@
 
 import math
 from collections.abc import Callable
+from itertools import pairwise
 
 import numpy as np
 import pytest
 from scipy import integrate, optimize, special, stats
 from studies import TWO_SIDED, answer, cell, estimate_with, study, two_means, value
 
-from bayesdesign.design import OneProportion
+from bayesdesign.design import OneProportion, TwoProportions
 from bayesdesign.interpret import interpret
 from bayesdesign.joint.integration import set_up
 from bayesdesign.joint.power import power_quantiles
 from bayesdesign.prior import Beta, Normal, Point
 from bayesdesign.rule import Significance
-from bayesdesign.study.study import Effect
+from bayesdesign.study.study import Effect, Prior
 
 TIGHT = 1e-9
-SETTINGS = [(0.3, 0.2, 0.14), (0.0, 1.0, 0.3), (-0.2, 0.05, 0.4), (5.0, 3.0, 0.01), (-0.1, 1e-3, 0.05), (0.2, 40.0, 0.5)]
+SETTINGS = [
+    (0.3, 0.2, 0.14),
+    (0.0, 1.0, 0.3),
+    (-0.2, 0.05, 0.4),
+    (5.0, 3.0, 0.01),
+    (-0.1, 1e-3, 0.05),
+    (0.2, 40.0, 0.5),
+]
 
 
 def integral(function: Callable[[float], float], points: list[float]) -> float:
     """Adaptive integral between the first and the last of these points, in pieces."""
     ends = sorted(points)
     return float(
-        sum(
-            integrate.quad(function, a, b, epsabs=1e-14, epsrel=1e-12, limit=200)[0]
-            for a, b in zip(ends[:-1], ends[1:], strict=True)
-        )
+        sum(integrate.quad(function, a, b, epsabs=1e-14, epsrel=1e-12, limit=200)[0] for a, b in pairwise(ends))
     )
 
 
@@ -43,11 +48,15 @@ def test_normal_prior_and_z_test(mean: float, sd: float, se: float, alpha: float
     both = ("lower", "higher")
     assert cell(given, both, "reject_higher") == pytest.approx(special.ndtr((mean - z * se) / spread), abs=TIGHT)
     assert cell(given, both, "reject_lower") == pytest.approx(special.ndtr((-mean - z * se) / spread), abs=TIGHT)
-    one = value(study(estimate_with(se), Normal(mean=mean, sd=sd), Significance(alpha=alpha, sides="lower")), "assurance")
+    one = value(
+        study(estimate_with(se), Normal(mean=mean, sd=sd), Significance(alpha=alpha, sides="lower")), "assurance"
+    )
     assert one == pytest.approx(special.ndtr((-mean - special.ndtri(1 - alpha) * se) / spread), abs=TIGHT)
 
 
-@pytest.mark.parametrize(("n", "d", "alpha", "spike"), [(5, 1.0, 0.05, 0.5), (64, 0.5, 0.01, 0.9), (200, -0.2, 0.1, 0.2)])
+@pytest.mark.parametrize(
+    ("n", "d", "alpha", "spike"), [(5, 1.0, 0.05, 0.5), (64, 0.5, 0.01, 0.9), (200, -0.2, 0.1, 0.2)]
+)
 def test_point_null_or_point_effect_and_t_test(n: int, d: float, alpha: float, spike: float) -> None:
     given = answer(study(two_means(n), Point(value=d), Significance(alpha=alpha), spike=spike, favourable="either"))
     t, df, nc = stats.t.isf(alpha / 2, 2 * n - 2), 2 * n - 2, d * math.sqrt(n / 2)
@@ -66,7 +75,8 @@ def test_point_null_or_point_effect_and_t_test(n: int, d: float, alpha: float, s
 
 
 @pytest.mark.parametrize(
-    ("n", "a", "b", "null", "alpha"), [(40, 8.0, 12.0, 0.2, 0.05), (7, 0.5, 0.5, 0.5, 0.2), (300, 2.0, 90.0, 0.01, 0.01), (1, 1.0, 3.0, 0.4, 0.45)]
+    ("n", "a", "b", "null", "alpha"),
+    [(40, 8.0, 12.0, 0.2, 0.05), (7, 0.5, 0.5, 0.5, 0.2), (300, 2.0, 90.0, 0.01, 0.01), (1, 1.0, 3.0, 0.4, 0.45)],
 )
 def test_beta_prior_and_binomial_test(n: int, a: float, b: float, null: float, alpha: float) -> None:
     critical = next(x for x in range(n + 2) if stats.binom.sf(x - 1, n, null) <= alpha)
@@ -93,7 +103,7 @@ def test_sign_and_size_at_a_point(signal: float, alpha: float) -> None:
 
     def excess(c: float) -> float:
         if c < z:
-            return -half
+            return -float(half)
         inside = special.ndtr(c - signal) - special.ndtr(z - signal)
         return float(inside + special.ndtr(-z - signal) - special.ndtr(-c - signal) - half)
 
@@ -134,7 +144,8 @@ def test_quantiles_of_monotone_power(level: float) -> None:
 
 @pytest.mark.parametrize("level", [0.05, 0.25, 0.5, 0.75, 0.95])
 def test_quantiles_of_power_that_falls_and_rises(level: float) -> None:
-    # about a null in the middle of the prior, power depends on |effect|, whose quantiles are those of the half-normal law
+    # about a null in the middle of the prior, power depends on |effect|, whose quantiles are those of the half-normal
+    # law
     made = study(estimate_with(0.3), Normal(mean=0.0, sd=0.5), TWO_SIDED, favourable="either")
     stated = answer(made).quantities["power_quantiles"]
     assert isinstance(stated.value, dict)
@@ -182,7 +193,9 @@ def test_posterior_after_a_decision(decision: str, spike: float) -> None:
 
 @pytest.mark.parametrize(("estimate", "error"), [(0.5, 0.1), (-0.4, 0.3), (0.0, 2.0), (2.0, 0.05)])
 def test_posterior_after_an_estimate_is_conjugate(estimate: float, error: float) -> None:
-    after = interpret(study(estimate_with(0.2), Normal(mean=0.3, sd=0.4)), estimate=estimate, se=error, mass=0.9).posterior
+    after = interpret(
+        study(estimate_with(0.2), Normal(mean=0.3, sd=0.4)), estimate=estimate, se=error, mass=0.9
+    ).posterior
     precision = 1 / 0.4**2 + 1 / error**2
     law = stats.norm((0.3 / 0.4**2 + estimate / error**2) / precision, precision**-0.5)
     assert [after.mean, after.sd] == pytest.approx([law.mean(), law.std()], abs=1e-8)
@@ -220,3 +233,29 @@ def test_two_sided_ceiling_with_a_spike() -> None:
     expected = 0.7 * stats.norm.sf(0, 0.05, 0.1) + 0.3 * 0.025
     assert value(made, "assurance_ceiling") == pytest.approx(expected, abs=TIGHT)
     assert made.effect == Effect(favourable="higher")
+
+
+@pytest.mark.parametrize(
+    ("treatment", "control", "n"),
+    [
+        ((12.0, 8.0), (8.0, 12.0), 20),
+        ((2.0, 2.0), (8.0, 12.0), 100),
+        ((2.0, 2.0), (2.0, 2.0), 20),
+        ((2.0, 2.0), (2.0, 2.0), 100),
+        ((1.0, 1.0), (1.0, 1.0), 50),
+    ],
+)
+def test_beta_beliefs_about_both_arms_equal_beta_binomial_sums(
+    treatment: tuple[float, float], control: tuple[float, float], n: int
+) -> None:
+    made = study(
+        TwoProportions(n_per_group=n, control=Beta(a=control[0], b=control[1])),
+        Prior(treatment=Beta(a=treatment[0], b=treatment[1])),
+        Significance(alpha=0.025, sides="higher"),
+    )
+    x, y = np.meshgrid(np.arange(n + 1), np.arange(n + 1), indexing="ij")
+    pooled = (x + y) / (2 * n)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        z = np.where(x == y, 0.0, (x - y) / n / np.sqrt(pooled * (1 - pooled) * 2 / n))
+    weight = stats.betabinom.pmf(x, n, *treatment) * stats.betabinom.pmf(y, n, *control)
+    assert value(made, "assurance") == pytest.approx(float(weight[z >= special.ndtri(0.975)].sum()), abs=1e-7)

@@ -41,7 +41,7 @@ def same(found: Sums, expected: Sums) -> None:
 @pytest.mark.parametrize("alpha", [0.2, 0.05, 0.001])
 def test_one_proportion_equals_enumeration(n: int, null: float, share: float, alpha: float) -> None:
     for sides in ("two", "higher", "lower"):
-        rule = Significance(alpha=alpha, sides=sides)  # type: ignore[arg-type]
+        rule = Significance(alpha=alpha, sides=sides)
         exact = by_program(OneProportion(n=n), share, rule, null=null)
         same(exact, one_sample(n, share, null, binomial_test(n, null, alpha, sides, "central")))
         by_z = by_program(OneProportion(n=n, analysis="z"), share, rule, null=null)
@@ -69,7 +69,10 @@ def test_two_proportions_equal_enumeration(n: int, m: int, p: float, q: float, a
         same(found, two_samples(n, m, (p, q), alpha, sides, analysis, scale))
     if analysis == "exact" and scale == "difference":
         rule = Significance(alpha=0.05, tails="minimum_likelihood")
-        same(by_program(design, effect, rule), two_samples(n, m, (p, q), 0.05, "two", analysis, scale, "minimum_likelihood"))
+        same(
+            by_program(design, effect, rule),
+            two_samples(n, m, (p, q), 0.05, "two", analysis, scale, "minimum_likelihood"),
+        )
 
 
 def outcomes_of(n: int, m: int, analysis: Any) -> TwoCounts:
@@ -99,7 +102,7 @@ def rejected_by_hand(n: int, m: int, analysis: str, level: float, *, higher: boo
 def region_equals_enumeration(n: int, m: int, analysis: str, level: float) -> None:
     x = np.arange(n + 1)[:, None]
     for side in ("higher", "lower"):
-        region = outcomes_of(n, m, analysis).test(0.0, level, side)  # type: ignore[arg-type]
+        region = outcomes_of(n, m, analysis).test(0.0, level, side)
         found = (region.lower[0, 0, 0] < x) & (x < region.upper[0, 0, 0])
         by_hand = rejected_by_hand(n, m, analysis, level, higher=side == "higher")
         assert np.array_equal(found, by_hand), (n, m, analysis, level, side)

@@ -48,6 +48,6 @@ def test_product_rule_integrates_products_of_smooth_functions(panels: bool) -> N
 @pytest.mark.parametrize("power", [-2.0, -1.0, 0.5, 1.0, 2.0])
 def test_rule_of_a_scale_integrates_its_powers(power: float) -> None:
     # a scale is integrated on its logarithm, where powers are smooth
-    nodes, weight = nuisance_nodes({"sd": Gamma(shape=30.0, rate=10.0)}, 12)
+    nodes, weight = nuisance_nodes({"sd": Gamma(shape=30.0, rate=10.0)}, 12, scales={"sd"})
     expected = np.exp(special.gammaln(30 + power) - special.gammaln(30)) / 10**power
     assert float(weight @ nodes["sd"] ** power) == pytest.approx(expected, rel=1e-11)

@@ -51,8 +51,12 @@ def test_single_arm_for_power_equals_the_binomial_law_at_every_n(null: float, ga
     assert (found.first_n, found.safe_n) == first_and_safe(np.array(power) >= at_least - CLEAR, 1)
 
 
-@pytest.mark.parametrize(("a", "b", "null", "at_least"), [(8.0, 12.0, 0.2, 0.7), (8.0, 12.0, 0.2, 0.85), (2.0, 2.0, 0.3, 0.6)])
-def test_single_arm_for_assurance_equals_the_beta_binomial_law_at_every_n(a: float, b: float, null: float, at_least: float) -> None:
+@pytest.mark.parametrize(
+    ("a", "b", "null", "at_least"), [(8.0, 12.0, 0.2, 0.7), (8.0, 12.0, 0.2, 0.85), (2.0, 2.0, 0.3, 0.6)]
+)
+def test_single_arm_for_assurance_equals_the_beta_binomial_law_at_every_n(
+    a: float, b: float, null: float, at_least: float
+) -> None:
     most, values = 600, []
     for n in range(1, most + 1):
         critical = int(np.argmax(stats.binom.sf(np.arange(-1, n + 1), n, null) <= 0.05 * (1 + 1e-10)))
@@ -89,7 +93,9 @@ def test_two_proportions_equal_every_n_at_a_fixed_effect() -> None:
 @pytest.mark.parametrize(
     "design", [Estimate(n=10, unit_sd=Point(value=2.0)), OneMean(n=10, sd=Point(value=2.0)), two_means(10, 1.5)]
 )
-@pytest.mark.parametrize(("measure", "at_least"), [("assurance", 0.6), ("expected_power", 0.8), ("power_at_planning_value", 0.9)])
+@pytest.mark.parametrize(
+    ("measure", "at_least"), [("assurance", 0.6), ("expected_power", 0.8), ("power_at_planning_value", 0.9)]
+)
 def test_continuous_designs_equal_every_n(design: Design, measure: str, at_least: float) -> None:
     made = study(
         design, Normal(mean=0.8, sd=0.6), favourable="higher", null=0.0, planning_value=0.9,
@@ -101,7 +107,9 @@ def test_continuous_designs_equal_every_n(design: Design, measure: str, at_least
 
 
 def test_no_n_is_claimed_above_the_ceiling() -> None:
-    made = study(two_means(10), Normal(mean=0.2, sd=0.2), favourable="higher", target=Target(at_least=0.9, max_n=20_000))
+    made = study(
+        two_means(10), Normal(mean=0.2, sd=0.2), favourable="higher", target=Target(at_least=0.9, max_n=20_000)
+    )
     found = size(made).size
     assert found is not None
     assert (found.first_n, found.safe_n, found.achieved) == (None, None, None)
