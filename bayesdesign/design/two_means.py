@@ -18,7 +18,6 @@ from bayesdesign.design.normal_line import NormalAnalysis, NormalLine, critical_
 from bayesdesign.prior.base import Distribution
 from bayesdesign.prior.point import Point
 
-
 PRUNED = 1e-13  # pairs of sample sds less likely than this are left out
 
 

@@ -125,24 +125,21 @@ def simulate_means(n: int, sd: float, draws: int, *, raw: bool, seed: int = 1) -
 def equal_accuracy(*, raw: bool, single: bool) -> Callable[[], tuple[float, float, float]]:
     """Time to assurance within MCSE: simulation, extrapolated by 1 / sqrt(draws), over integration (warm, in process).
 
-    `single`: only the joint table and its readings, at the coarsest level of refinement that is that accurate;
-    otherwise all that `evaluate` gives, median and quantiles and messages included.
+    `single`: only the joint table and its ratio readings with their errors; otherwise all that `evaluate` gives,
+    median, quantiles and messages included.
     """
 
     def measure() -> tuple[float, float, float]:
-        from bayesdesign.joint.integration import integrate
-        from bayesdesign.joint.table import cells
+        from bayesdesign.joint.refined import refine
         from bayesdesign.measures.ratios import readings
 
         study = bd.parse_study(FIXED)
         fine = bd.evaluate(study).quantities["assurance"].value
         assert isinstance(fine, float)
-
-        def read() -> float:
-            return float(readings(cells(integrate(study, [40], 0)), study)["assurance"].value[0, 0])
-
-        assert abs(read() - fine) < MCSE, "the coarsest level is not accurate enough for this comparison"
-        ours = seconds(read if single else lambda: bd.evaluate(study), 20)
+        act: Callable[[], object] = lambda: bd.evaluate(study)  # noqa: E731
+        if single:
+            act = lambda: refine(study, [40], readings, 1e-6)  # noqa: E731
+        ours = seconds(act, 20)
         draws = DRAWS // 5 if raw else DRAWS  # raw data of a million studies would not fit everywhere
         found, _ = simulate_means(40, 5.0, draws, raw=raw)
         assert abs(found - fine) < 6 * np.sqrt(fine * (1 - fine) / draws), "the two do not compute the same"
@@ -180,8 +177,8 @@ def rows(folder: Path) -> Iterator[Row]:
     yield at_most("evaluate two means at 200 n", full, 3, against_import(FULL, "evaluate", fixed, "--n", *sizes))
     yield at_most("evaluate Fisher, 1000 per group, betas", full, 5, against_import(FULL, "evaluate", fisher))
     for label, raw, single in (
-        ("raw data / table of assurance", True, True),
-        ("statistics / table of assurance", False, True),
+        ("raw data / the table with its errors", True, True),
+        ("statistics / the table with its errors", False, True),
         ("raw data / whole of evaluate", True, False),
         ("statistics / whole of evaluate", False, False),
     ):
