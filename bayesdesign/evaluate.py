@@ -22,9 +22,6 @@ DRAWS = 1_000_000
 TOLERANCE = 1e-6
 # Judged one by one, by `COARSE`, instead of refusing the run: the multiples and quantiles, which are no probabilities.
 ON_THEIR_OWN = ("exaggeration_ratio", "exaggeration_at_planning_value", "exaggeration_median", "power_quantiles")
-    "exaggeration_median",
-    "power_quantiles",
-)  # no ratios of sums; withheld one by one instead of refusing the run
 RARE = 1e-4  # a number under a condition less likely than this is withheld on its own, too
 COARSE = 5e-3  # relative error beyond which one of those is withheld
 DISAGREEMENT = 5.0  # standard errors between the routes beyond which both numbers are refused
