@@ -134,7 +134,7 @@ class NormalLine(Outcomes):
 
 def _cut(bound: FloatArray, n: int, columns: slice) -> FloatArray:
     """Bounds (N or 1, M or 1, K or 1, A or 1) of one size and some nuisance nodes."""
-    row = bound[n if bound.shape[0] > 1 else 0]
+    row: FloatArray = bound[n if bound.shape[0] > 1 else 0]
     return row[columns] if row.shape[0] > 1 else row
 
 

@@ -13,6 +13,8 @@ from bayesdesign.core.search import root_of_increasing
 from bayesdesign.joint.integration import LEVELS, Setting, distances, set_up, truth_nodes
 from bayesdesign.study.study import Study
 
+GOAL = 5e-9  # change between levels at which the refinement stops
+COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is enough
 LEAST_LIKELIHOOD = 1e-250  # evidence with less probability than this cannot be told from rounding
 
 
@@ -58,95 +60,105 @@ def posterior_by_integration(
     Raises:
         Refused: the evidence is practically impossible under the prior, or the tolerance is missed.
     """
-    before = _at_level(study, n, evidence, mass, 0)
+    coarse = _Weighing(study, n, evidence, 0)
+    before = coarse.numbers()
     for level in range(1, len(LEVELS)):
-        now = _at_level(study, n, evidence, mass, level, before)
-        errors = {name: abs(value - before[name]) + 1e-13 * max(1.0, abs(value)) for name, value in now.items()}
-        scale = max(1.0, abs(now["mean"]), now["sd"])
-        if max(error for name, error in errors.items() if name != "evidence") <= min(5e-9, tolerance) * scale:
+        fine = _Weighing(study, n, evidence, level)
+        now = fine.numbers()
+        worst = max(_relative_errors(now, before).values())
+        enough = tolerance / 2 if fine.work > COSTLY else min(GOAL, tolerance)
+        if worst <= enough or level + 1 == len(LEVELS):
             break
-        before = now
-    worst = max((name for name in errors if name != "evidence"), key=lambda name: errors[name])
-    if errors[worst] > tolerance * scale:
+        coarse, before = fine, now
+    # the quantiles cost a search each time, so only the last two levels are asked for them
+    ranks = np.array([(1 - mass) / 2, 0.5, (1 + mass) / 2])
+    near = coarse.quantiles(ranks, None)
+    before |= dict(zip(("low", "median", "high"), near.tolist(), strict=True))
+    now |= dict(zip(("low", "median", "high"), fine.quantiles(ranks, near).tolist(), strict=True))
+    errors = _relative_errors(now, before)
+    name = max(errors, key=lambda key: errors[key])
+    if errors[name] > tolerance:
         raise Refused(
-            f"posterior {worst}: integration error {errors[worst]:.2g} exceeds the tolerance {tolerance:.2g}",
+            f"posterior {name}: integration error {errors[name]:.2g} exceeds the tolerance {tolerance:.2g}",
             "try --route sampling, or accept a larger --tolerance",
         )
-    names = study.states.names
     plain = {key: now[key] for key in ("mean", "sd", "median", "low", "high", "above_null", "below_null", "evidence")}
-    return Posterior(states={name: now[f"P({name})"] for name in names}, mass=mass, errors=errors, **plain)
+    return Posterior(
+        states={name: now[f"P({name})"] for name in study.states.names},
+        mass=mass,
+        errors={key: abs(now[key] - before[key]) + 1e-13 * max(1.0, abs(now[key])) for key in now},
+        **plain,
+    )
 
 
-def _at_level(
-    study: Study, n: int | None, evidence: Evidence, mass: float, level: int, before: dict[str, float] | None = None
-) -> dict[str, float]:
-    """The numbers at one level; those of the level `before` say where to look for the quantiles."""
-    setting = set_up(study, [n], level)
-    if evidence.regions is not None:
-        setting = replace(setting, regions=evidence.regions(setting))
-    total = 0.0
+def _relative_errors(now: dict[str, float], before: dict[str, float]) -> dict[str, float]:
+    """Change of every number: of probabilities as it is, of effects relative to where the posterior lies."""
+    scale = max(1.0, abs(now["mean"]) + now["sd"])
+    effects = ("mean", "sd", "low", "median", "high")
+    return {key: abs(now[key] - before[key]) / (scale if key in effects else 1.0) for key in now if key != "evidence"}
 
-    def weigh(cuts: Sequence[float]) -> tuple[FloatArray, FloatArray]:
-        nonlocal total
-        truths = truth_nodes(setting, (*evidence.cuts, *cuts))
-        weight = (truths.weight * evidence.likelihood(setting, truths.effect)).ravel()
+
+class _Weighing:
+    """The nodes of one level, weighted with the evidence; panels may be made to end on given effects."""
+
+    def __init__(self, study: Study, n: int | None, evidence: Evidence, level: int) -> None:
+        setting = set_up(study, [n], level)
+        if evidence.regions is not None:
+            setting = replace(setting, regions=evidence.regions(setting))
+        self.study, self.setting, self.evidence = study, setting, evidence
+        self.work = 0
+
+    def weigh(self, cuts: Sequence[float] = ()) -> tuple[FloatArray, FloatArray, float]:
+        """Effects, their posterior weights, and the probability (density) of the evidence."""
+        truths = truth_nodes(self.setting, (*self.evidence.cuts, *cuts))
+        self.work = truths.effect.size * self.setting.outcomes.work
+        weight = (truths.weight * self.evidence.likelihood(self.setting, truths.effect)).ravel()
         total = float(weight.sum())
         if not total > LEAST_LIKELIHOOD:
             raise Refused(
                 "the evidence is practically impossible under the prior",
                 "check the numbers and their direction; if they are right, the prior is wrong",
             )
-        return truths.effect.ravel(), weight / total
+        return truths.effect.ravel(), weight / total, total
 
-    effect, weight = weigh(())
-    evidence_weight = total
-    distance, exactly_null = distances(study, effect)
-    state = study.states.classify(distance, exactly_null)
-    mean = float(weight @ effect)
-    ranks = np.array([(1 - mass) / 2, 0.5, (1 + mass) / 2])
-    near = None if before is None else np.array([before["low"], before["median"], before["high"]])
-    low, median, high = _quantiles(weigh, _atoms(study), ranks, near)
-    return {
-        **{f"P({name})": float(weight[state == i].sum()) for i, name in enumerate(study.states.names)},
-        "mean": mean,
-        "sd": float(np.sqrt(weight @ (effect - mean) ** 2)),
-        "median": median,
-        "low": low,
-        "high": high,
-        "above_null": float(weight[distance > 0].sum()),
-        "below_null": float(weight[distance < 0].sum()),
-        "evidence": evidence_weight,
-    }
+    def numbers(self) -> dict[str, float]:
+        """Everything but the quantiles."""
+        effect, weight, total = self.weigh()
+        distance, exactly_null = distances(self.study, effect)
+        state = self.study.states.classify(distance, exactly_null)
+        mean = float(weight @ effect)
+        return {
+            **{f"P({name})": float(weight[state == i].sum()) for i, name in enumerate(self.study.states.names)},
+            "mean": mean,
+            "sd": float(np.sqrt(weight @ (effect - mean) ** 2)),
+            "above_null": float(weight[distance > 0].sum()),
+            "below_null": float(weight[distance < 0].sum()),
+            "evidence": total,
+        }
+
+    def quantiles(self, ranks: FloatArray, near: FloatArray | None) -> FloatArray:
+        """Quantiles of the effect: bracketed close to `near` or by the nodes, then sought with panels that end on the
+        candidates.
+        """
+        atoms = _atoms(self.study)
+        effect, weight, _ = self.weigh(tuple(atoms))
+
+        def excess(points: FloatArray) -> FloatArray:
+            nodes, weights, _ = self.weigh(tuple(points))
+            slack = 1e-14 * np.maximum(1.0, np.abs(points))
+            return np.array([weights[nodes <= p + s].sum() for p, s in zip(points, slack, strict=True)]) - ranks
+
+        low, high = _bracket(excess, effect, weight, ranks, near)
+        for atom in atoms:
+            inside = (weight[effect < atom].sum() < ranks) & (ranks <= weight[effect <= atom].sum())
+            low, high = np.where(inside, atom, low), np.where(inside, atom, high)
+        return root_of_increasing(excess, low, high, 1e-11 * max(1e-300, float(np.max(np.abs(high)))))
 
 
 def _atoms(study: Study) -> FloatArray:
     """Effects with a point mass."""
     null = [study.null] if study.exact_null_weight > 0 else []
     return np.unique([*null, *(study.prior.effect.atoms()[0] if study.prior.effect is not None else [])])
-
-
-def _quantiles(
-    weigh: Callable[[Sequence[float]], tuple[FloatArray, FloatArray]],
-    atoms: FloatArray,
-    ranks: FloatArray,
-    near: FloatArray | None,
-) -> tuple[float, float, float]:
-    """Quantiles of the effect: bracketed close to `near` or by the nodes, then sought with panels that end on the
-    candidates.
-    """
-    effect, weight = weigh(tuple(atoms))
-
-    def excess(points: FloatArray) -> FloatArray:
-        nodes, weights = weigh(tuple(points))
-        slack = 1e-14 * np.maximum(1.0, np.abs(points))
-        return np.array([weights[nodes <= p + s].sum() for p, s in zip(points, slack, strict=True)]) - ranks
-
-    low, high = _bracket(excess, effect, weight, ranks, near)
-    for atom in atoms:
-        inside = (weight[effect < atom].sum() < ranks) & (ranks <= weight[effect <= atom].sum())
-        low, high = np.where(inside, atom, low), np.where(inside, atom, high)
-    close = 1e-12 * max(1e-300, float(np.max(np.abs(high))))
-    return tuple(map(float, root_of_increasing(excess, low, high, close)))  # type: ignore[return-value]
 
 
 def _bracket(

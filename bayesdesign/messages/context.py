@@ -186,4 +186,5 @@ def hundred(p: float) -> str:
         return "fewer than 1"
     if 0.995 < p < 1:
         return "more than 99"
-    return str(math.floor(100 * p + 0.5))
+    # shares of the 400 points often end on a half, which must not fall with the last bit
+    return str(math.floor(100 * p + 0.5 + 1e-9))
