@@ -180,9 +180,16 @@ def _bracket(
     order = np.argsort(effect, kind="stable")
     at = effect[order]
     k = np.clip(np.searchsorted(np.cumsum(weight[order]), ranks), 0, len(at) - 1)
-    reach = 4
-    while True:  # nodes of different nuisance values interleave, so a quantile can lie some nodes off
+    low, high, reach = np.full(len(ranks), at[0]), np.full(len(ranks), at[-1]), 4
+    while reach < 4 * len(at):  # nodes of different nuisance values interleave, so a quantile can lie some nodes off
         low, high = at[np.maximum(k - reach, 0)], at[np.minimum(k + reach, len(at) - 1)]
-        if reach >= len(at) or holds(low, high):
+        if holds(low, high):
             return low, high
         reach *= 4
+    margin = float(at[-1] - at[0]) or abs(float(at[0])) or 1.0
+    for _ in range(60):  # or beyond the outermost node
+        if holds(low, high):
+            break
+        low, high = low - margin, high + margin
+        margin *= 2
+    return low, high
