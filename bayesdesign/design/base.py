@@ -205,6 +205,11 @@ class Design(abc.ABC):
         del effects
         return {}
 
+    def nuisance_meets(self, effects: FloatArray, treatments: FloatArray) -> dict[str, FloatArray]:
+        """Values of nuisance parameters at which one of these effects and one of these treated arms go together."""
+        del effects, treatments
+        return {}
+
     def treatment_of(self, effect: FloatArray, nuisance: Mapping[str, FloatArray]) -> FloatArray:
         """The treated arm's parameter that an effect implies; for families whose prior may be on both arms."""
         raise NotOffered(f"[prior] treatment is not available for family '{self.family}'; give [prior] effect")

@@ -119,6 +119,14 @@ effect = { distribution = "normal", mean = 0.15, sd = 0.06 }
             return {"control": np.concatenate([-effects, 1 - effects])}
         return {"control": 1 / effects[effects > 1]} if self.scale == "ratio" else {}
 
+    def nuisance_meets(self, effects: FloatArray, treatments: FloatArray) -> dict[str, FloatArray]:
+        effect, treatment = effects[:, None], treatments[None, :]
+        if self.scale == "difference":
+            return {"control": (treatment - effect).ravel()}
+        if self.scale == "ratio":
+            return {"control": (treatment / effect[effect[:, 0] > 0]).ravel()}
+        return {}  # odds ratios meet the ends of the treated arm at those of the control only
+
     def treatment_of(self, effect: FloatArray, nuisance: Mapping[str, Any]) -> FloatArray:
         control = nuisance["control"]
         if self.scale == "difference":

@@ -65,8 +65,12 @@ class Setting:
         return self.outcomes.probabilities(effect, self.regions)
 
 
-def set_up(study: Study, n: Sequence[int | None], level: int, fine_nuisance: int | None = None) -> Setting:
-    """Prepare the outcomes and regions of a study at these sizes; `fine_nuisance` nodes to a panel of the nuisances."""
+def set_up(
+    study: Study, n: Sequence[int | None], level: int, fine_nuisance: int | None = None, cuts: Sequence[float] = ()
+) -> Setting:
+    """Prepare the outcomes and regions of a study at these sizes; `fine_nuisance` nodes to a panel of the nuisances,
+    `cuts` further effects at which truths will be told apart.
+    """
     effect, nuisance_order, auxiliary = LEVELS[level]
     accuracy = Accuracy(
         effect=effect, nuisance=nuisance_order, auxiliary=auxiliary, finest_level=study.rule.finest_level
@@ -76,7 +80,7 @@ def set_up(study: Study, n: Sequence[int | None], level: int, fine_nuisance: int
     else:
         order, panels = fine_nuisance, True
     nuisance, weight = nuisance_nodes(
-        study.design.nuisance, order, panels=panels, kinks=_nuisance_kinks(study), scales=_scales(study)
+        study.design.nuisance, order, panels=panels, kinks=_nuisance_kinks(study, cuts), scales=_scales(study)
     )
     sizes = np.array([1.0 if k is None else float(k) for k in n])
     outcomes = study.design.outcomes(sizes, nuisance, study.null, accuracy)
@@ -96,11 +100,15 @@ def _scales(study: Study) -> list[str]:
     return [name for name in study.design.nuisance if np.isinf(study.design.nuisance_bounds(name)[1])]
 
 
-def _nuisance_kinks(study: Study) -> dict[str, FloatArray]:
-    if study.prior.effect is None:
-        return {}
-    belief = study.prior.effect
-    return study.design.nuisance_kinks(np.unique([e for e in (*belief.support, *belief.atoms()[0]) if np.isfinite(e)]))
+def _nuisance_kinks(study: Study, cuts: Sequence[float]) -> dict[str, FloatArray]:
+    """Where the sums over the effect bend as functions of the nuisance parameters."""
+    belief = study.prior.variable
+    ends = np.unique([e for e in (*belief.support, *belief.atoms()[0]) if np.isfinite(e)])
+    if study.prior.effect is not None:
+        return study.design.nuisance_kinks(ends)
+    # a boundary between states leaves the treated arm's range with a bend only where the density does not fade out
+    sharp = ends[belief.pdf(ends) > 0]
+    return study.design.nuisance_meets(np.array([*_boundaries(study), *cuts]), sharp)
 
 
 @final

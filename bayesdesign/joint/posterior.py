@@ -102,17 +102,23 @@ class _Weighing:
     """The nodes of one level, weighted with the evidence; panels may be made to end on given effects."""
 
     def __init__(self, study: Study, n: int | None, evidence: Evidence, level: int) -> None:
-        setting = set_up(study, [n], level)
-        if evidence.regions is not None:
-            setting = replace(setting, regions=evidence.regions(setting))
-        self.study, self.setting, self.evidence = study, setting, evidence
+        self.study, self.n, self.evidence, self.level = study, n, evidence, level
+        self.plain = self._set_up(())
         self.work = 0
+
+    def _set_up(self, cuts: Sequence[float]) -> Setting:
+        setting = set_up(self.study, [self.n], self.level, cuts=cuts)
+        return (
+            replace(setting, regions=self.evidence.regions(setting)) if self.evidence.regions is not None else setting
+        )
 
     def weigh(self, cuts: Sequence[float] = ()) -> tuple[FloatArray, FloatArray, float]:
         """Effects, their posterior weights, and the probability (density) of the evidence."""
-        truths = truth_nodes(self.setting, (*self.evidence.cuts, *cuts))
-        self.work = truths.effect.size * self.setting.outcomes.work
-        weight = (truths.weight * self.evidence.likelihood(self.setting, truths.effect)).ravel()
+        # with a belief about the treated arm the nuisance nodes depend on the cuts, too
+        setting = self._set_up(cuts) if cuts and self.study.prior.treatment is not None else self.plain
+        truths = truth_nodes(setting, (*self.evidence.cuts, *cuts))
+        self.work = truths.effect.size * setting.outcomes.work
+        weight = (truths.weight * self.evidence.likelihood(setting, truths.effect)).ravel()
         total = float(weight.sum())
         if not total > LEAST_LIKELIHOOD:
             raise Refused(
