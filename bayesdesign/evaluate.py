@@ -203,6 +203,8 @@ def quantity(number: Number, i: int, route: str, tolerance: float) -> Quantity:
         return Quantity(value=None, error=None, route=route, why_null=why)
     if np.ndim(value):
         return Quantity(value=_by_level(value), error=_by_level(error), route=route)
+    if 1 < value < 1 + 1e-12:
+        value = 1.0  # a certainty, summed
     if np.isfinite(value):
         return Quantity(value=float(value), error=float(error), route=route)
     why = "infinite" if np.isinf(value) else number.why_null or "undefined"

@@ -91,7 +91,8 @@ class TwoCounts(Outcomes):
         """
         target = estimate + self.transform(y, self.sizes[1])
         ends = self.transform(np.array([0.0, self.sizes[0]]), self.sizes[0])
-        x = self.sizes[0] * self.inverse(target)
+        with np.errstate(over="ignore"):  # an endless reach holds every count
+            x = self.sizes[0] * self.inverse(target)
         return np.where(target < ends[0], -1.0, np.where(target > ends[1], self.sizes[0] + 1, x))
 
     def null_outcome(self) -> FloatArray:
@@ -103,7 +104,8 @@ class TwoCounts(Outcomes):
             return effect if self.inverse is IDENTITY else np.log(effect)
 
     def natural_effect(self, working: FloatArray) -> FloatArray:
-        return working if self.inverse is IDENTITY else np.exp(working)
+        with np.errstate(over="ignore"):
+            return working if self.inverse is IDENTITY else np.exp(working)
 
     def outcomes_within(self, reach: FloatArray) -> tuple[FloatArray, FloatArray]:
         return self._within(reach[..., None], self._y())

@@ -106,9 +106,7 @@ def _nuisance_kinks(study: Study, cuts: Sequence[float]) -> dict[str, FloatArray
     ends = np.unique([e for e in (*belief.support, *belief.atoms()[0]) if np.isfinite(e)])
     if study.prior.effect is not None:
         return study.design.nuisance_kinks(ends)
-    # a boundary between states leaves the treated arm's range with a bend only where the density does not fade out
-    sharp = ends[belief.pdf(ends) > 0]
-    return study.design.nuisance_meets(np.array([*_boundaries(study), *cuts]), sharp)
+    return study.design.nuisance_meets(np.array([*_boundaries(study), *cuts]), ends)
 
 
 @final

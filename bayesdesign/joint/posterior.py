@@ -15,6 +15,7 @@ from bayesdesign.study.study import Study
 
 GOAL = 5e-9  # change between levels at which the refinement stops
 COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is enough
+QUANTILES = ("low", "median", "high")
 LEAST_LIKELIHOOD = 1e-250  # evidence with less probability than this cannot be told from rounding
 
 
@@ -70,12 +71,19 @@ def posterior_by_integration(
         if worst <= enough or level + 1 == len(LEVELS):
             break
         coarse, before = fine, now
-    # the quantiles cost a search each time, so only the last two levels are asked for them
+    # the quantiles cost a search each time, so only the last levels are asked for them
     ranks = np.array([(1 - mass) / 2, 0.5, (1 + mass) / 2])
     near = coarse.quantiles(ranks, None)
-    before |= dict(zip(("low", "median", "high"), near.tolist(), strict=True))
-    now |= dict(zip(("low", "median", "high"), fine.quantiles(ranks, near).tolist(), strict=True))
-    errors = _relative_errors(now, before)
+    before |= dict(zip(QUANTILES, near.tolist(), strict=True))
+    while True:
+        near = fine.quantiles(ranks, near)
+        now |= dict(zip(QUANTILES, near.tolist(), strict=True))
+        errors = _relative_errors(now, before)
+        if max(errors.values()) <= tolerance or level + 1 == len(LEVELS):
+            break
+        level += 1
+        fine, before = _Weighing(study, n, evidence, level), now
+        now = fine.numbers()
     name = max(errors, key=lambda key: errors[key])
     if errors[name] > tolerance:
         raise Refused(

@@ -7,6 +7,7 @@ import numpy as np
 from bayesdesign.core.arrays import FloatArray
 from bayesdesign.prior.base import Distribution
 
+FAINT = 1e-10  # a bend with less of the nuisance's mass beyond it needs no panel of its own
 NEGLIGIBLE = 1e-16  # nuisance nodes below this weight are dropped; the rest is scaled up
 
 
@@ -75,7 +76,7 @@ def nuisance_nodes(
     weight = np.ones(1)
     for name, belief in nuisance.items():
         cuts = (kinks or {}).get(name, np.empty(0))
-        cuts = cuts[(belief.cdf(cuts) > NEGLIGIBLE) & (belief.sf(cuts) > NEGLIGIBLE)]
+        cuts = cuts[(belief.cdf(cuts) > FAINT) & (belief.sf(cuts) > FAINT)]
         cut = cuts.size > 0 and not panels
         x, w = _one_nuisance(belief, max(3, order // 3) if cut else order, cuts, panels or cut, name in scales)
         grids = [np.repeat(g, len(x)) for g in grids] + [np.tile(x, len(weight))]
