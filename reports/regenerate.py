@@ -28,7 +28,7 @@ def run(command: str) -> tuple[str, int]:
     return printed.getvalue(), code
 
 
-def transcript(study: str) -> str:
+def session(study: str) -> str:
     """The commands as one would type them at the top of the repository, each with what it prints."""
     parts = []
     for template in COMMANDS:
@@ -72,7 +72,7 @@ def main() -> None:
         for study in studies:
             if given.names and study.stem not in given.names:
                 continue
-            (into / f"{study.stem}.txt").write_text(transcript(study.as_posix()), encoding="utf-8")
+            (into / f"{study.stem}.txt").write_text(session(study.as_posix()), encoding="utf-8")
             document, _ = run(f"evaluate {study.as_posix()} --json")
             (into / f"{study.stem}.json").write_text(document, encoding="utf-8")
             print(study.stem, flush=True)

@@ -23,9 +23,12 @@ def interpretation_text(found: "Interpretation", *, colour: bool = False) -> str
     _states(page, found)
     _effect(page, found)
     page.paragraph(_open(found))
+    _routes(page, found)
     foot_messages(page, found.design.messages)
     caution(page, study)
-    provenance_line(page, study.sha256, found.design.provenance, "integration")
+    provenance_line(
+        page, study.sha256, found.design.provenance, "integration" if found.nuts is None else "integration and MCMC"
+    )
     return page.text(colour=colour)
 
 
@@ -67,6 +70,29 @@ def _effect(page: Page, found: "Interpretation") -> None:
     page.line(pad("median", 25) + words.natural(after.median, study))
     page.line(pad(f"{100 * after.mass:g}% interval", 25) + f"{low} to {high}")
     page.line(pad(f"chance that it is above {words.null(study)}", 25) + f" {_share(after.above_null)}")
+
+
+def _routes(page: Page, found: "Interpretation") -> None:
+    """The posterior by integration and by MCMC, with the difference in standard errors."""
+    if found.nuts is None:
+        return
+    after, drawn = found.posterior, found.nuts
+    pairs = [
+        *((f"P({name})", after.states[name], number) for name, number in drawn["state_probabilities"].items()),
+        ("mean", after.mean, drawn["effect_mean"]),
+        ("sd", after.sd, drawn["effect_sd"]),
+        ("median", after.median, drawn["effect_median"]),
+        ("lower end", after.low, drawn["interval"]["low"]),
+        ("upper end", after.high, drawn["interval"]["high"]),
+    ]
+    page.section("both routes")
+    page.line(pad("", 24) + "".join(pad(head, 13, ">") for head in ("integration", "MCMC", "std. error", "difference")))
+    for name, exact, number in pairs:
+        if number is None:
+            continue
+        gap = (number["value"] - exact) / number["mcse"] if number["mcse"] else 0.0
+        cells = (f"{exact:.4g}", f"{number['value']:.4g}", f"±{number['mcse']:.1g}", f"{gap:+.1f}")
+        page.line(pad(name, 24) + "".join(pad(cell, 13, ">") for cell in cells))
 
 
 def _share(p: float) -> str:
