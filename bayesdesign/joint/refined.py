@@ -21,6 +21,9 @@ from bayesdesign.study.study import Prior, Study
 
 GOAL = 5e-9  # change from one refinement to the next at which the route stops by default
 COSTLY = 8_000_000  # elements of one table beyond which the tolerance itself is enough
+SAFETY = (
+    8.0  # stated error over last change: with heavy tails and few degrees of freedom a level gains less than one digit
+)
 MEMORY = 0.15  # share of the change before that is kept in the error of designs with counts
 ROUNDING = 1e-13  # what accumulates in sums of some hundred terms, relative to the condition's probability
 
@@ -67,7 +70,7 @@ def refine(study: Study, n: Sequence[int | None], read: Reader, tolerance: float
     for level in range(1, len(LEVELS)):
         joint = integrate(study, n, level)
         now = cells(joint)
-        numbers = _with_errors(read(now, study), read(before, study))
+        numbers = _with_errors(read(now, study), read(before, study), 1.0 if study.design.saw_tooth else SAFETY)
         if study.design.saw_tooth:
             numbers, last = _no_luck(numbers, last), numbers
         cells_error = np.abs(now.by_state - before.by_state)[:, 0] + ROUNDING
@@ -103,7 +106,7 @@ def _settled(number: Number, goal: float) -> BoolArray:
     return np.asarray(~np.isfinite(number.value) | (number.error <= goal * scale))
 
 
-def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio]) -> dict[str, Number]:
+def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio], safety: float) -> dict[str, Number]:
     numbers = {}
     for name, ratio in now.items():
         value, old = ratio.value[:, 0], before[name].value[:, 0]
@@ -112,7 +115,7 @@ def _with_errors(now: dict[str, Ratio], before: dict[str, Ratio]) -> dict[str, N
             rounding = ROUNDING * np.maximum(
                 1.0, np.abs(value)
             )  # sums of positive terms keep their digits, rare or not
-            numbers[name] = Number(value, np.abs(value - old) + rounding, ratio.why_null, weight)
+            numbers[name] = Number(value, safety * np.abs(value - old) + rounding, ratio.why_null, weight)
     return numbers
 
 
